@@ -1,0 +1,70 @@
+"""Units at the boundary. Inside, one system: R_E, hours, keV, elementary charges, nT, kV, radians.
+
+Charge times potential is then an energy in keV, and the drift needs the single constant
+`fields.constants.KV_PER_NT_RE2_TO_PER_H`.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from fields.constants import ELEMENTARY_CHARGE_C, SPEED_OF_LIGHT_M_S
+
+Floats = NDArray[np.float64]
+
+NT_PER_GAUSS = 1e5
+KEV_PER_NT_PER_MEV_PER_GAUSS = 1e3 / NT_PER_GAUSS  # 1 MeV/G in keV/nT
+SQRT_NT_PER_SQRT_GAUSS = float(np.sqrt(NT_PER_GAUSS))
+RAD_PER_MLT_HOUR = np.pi / 12.0
+
+
+def mu_from_MeV_per_G(mu: ArrayLike) -> Floats:
+    """First invariant, MeV/G to keV/nT."""
+    return np.asarray(mu, dtype=float) * KEV_PER_NT_PER_MEV_PER_GAUSS
+
+
+def mu_to_MeV_per_G(mu: ArrayLike) -> Floats:
+    """First invariant, keV/nT to MeV/G."""
+    return np.asarray(mu, dtype=float) / KEV_PER_NT_PER_MEV_PER_GAUSS
+
+
+def k_from_re_sqrtG(k: ArrayLike) -> Floats:
+    """Second invariant, R_E G^(1/2) to R_E nT^(1/2)."""
+    return np.asarray(k, dtype=float) * SQRT_NT_PER_SQRT_GAUSS
+
+
+def k_to_re_sqrtG(k: ArrayLike) -> Floats:
+    """Second invariant, R_E nT^(1/2) to R_E G^(1/2)."""
+    return np.asarray(k, dtype=float) / SQRT_NT_PER_SQRT_GAUSS
+
+
+def rest_energy_keV(mass_kg: ArrayLike) -> Floats:
+    """Rest energy m c^2."""
+    return np.asarray(mass_kg, dtype=float) * SPEED_OF_LIGHT_M_S**2 / ELEMENTARY_CHARGE_C * 1e-3
+
+
+def phi_from_mlt(mlt_h: ArrayLike) -> Floats:
+    """Azimuth in radians, eastward from noon (SM x axis), in [-pi, pi), from magnetic local time in hours."""
+    return (np.mod(np.asarray(mlt_h, dtype=float), 24.0) - 12.0) * RAD_PER_MLT_HOUR
+
+
+def mlt_from_phi(phi: ArrayLike) -> Floats:
+    """Magnetic local time in [0, 24) hours from azimuth in radians."""
+    mlt = np.mod(12.0 + np.asarray(phi, dtype=float) / RAD_PER_MLT_HOUR, 24.0)
+    return np.where(mlt >= 24.0, 0.0, mlt)  # mod of a tiny negative number rounds up to 24
+
+
+def cos2_of_pitch(pitch_deg: ArrayLike) -> Floats:
+    """cos^2 of the equatorial pitch angle, without the loss of digits of 1 - sin^2 near 90 degrees."""
+    return np.sin(np.radians(90.0 - np.asarray(pitch_deg, dtype=float))) ** 2
+
+
+def pitch_of_cos2(cos2: ArrayLike) -> Floats:
+    """Equatorial pitch angle in (0, 90] degrees from its cos^2."""
+    c2 = np.asarray(cos2, dtype=float)
+    return np.where(
+        c2 < 0.5,
+        90.0 - np.degrees(np.arcsin(np.sqrt(np.minimum(c2, 0.5)))),
+        np.degrees(np.arcsin(np.sqrt(np.maximum(1.0 - c2, 0.0)))),
+    )
