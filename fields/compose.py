@@ -75,6 +75,18 @@ class Field:
         """Magnetic field strength at equatorial points, nT."""
         return self.equatorial_field(r_re, phi_from_mlt(mlt_h))
 
+    def curvature_radius(self, r: ArrayLike, phi: ArrayLike) -> Floats:
+        """Radius of curvature of the field line where it crosses the equator, R_E; central differences, error about 1e-7.
+
+        There B points along z and (b.grad) b is the change of B's equatorial part along z, over B.
+        """
+        radius, azimuth = np.broadcast_arrays(np.asarray(r, dtype=float), np.asarray(phi, dtype=float))
+        step = 1e-4 * radius
+        x, y = radius * np.cos(azimuth), radius * np.sin(azimuth)
+        above, below = (self.magnetic.field_nT(x, y, side * step) for side in (1.0, -1.0))
+        bend = [(up - down) / (2.0 * step) for up, down in zip(above[:2], below[:2], strict=True)]
+        return np.asarray(self.equatorial_field(radius, azimuth) / np.hypot(*bend))
+
     def equatorial_field(self, r: ArrayLike, phi: ArrayLike) -> Floats:
         """B at the equator in nT; internal units."""
         radius, azimuth = np.broadcast_arrays(np.asarray(r, dtype=float), np.asarray(phi, dtype=float))

@@ -81,7 +81,8 @@ class Parameter:
             return f"any finite number{unit}"
         if math.isinf(self.high):
             return f"a number {'above' if self.low_open else 'of at least'} {self.low:g}{unit}"
-        return f"a number {'above' if self.low_open else 'from'} {self.low:g} to {self.high:g}{unit}"
+        low = f"above {self.low:g} and up" if self.low_open else f"from {self.low:g}"
+        return f"a number {low} to {self.high:g}{unit}"
 
 
 @dataclass(frozen=True)
@@ -125,8 +126,8 @@ class MagneticTerms:
     equator : callable
         ``(r, sin_phi, cos_phi, *arguments) -> B`` at the equator, nT.
     mirror : callable
-        ``(k, r, sin_phi, cos_phi, *arguments) -> (B_m, dB_m/dr, dB_m/dphi, cos2)``: the mirror field in nT at fixed second
-        invariant k (R_E nT^(1/2)), its slopes, and cos^2 of the equatorial pitch angle.
+        ``(k, r, sin_phi, cos_phi, *arguments) -> (B_m, dB_m/dr, dB_m/dphi, cot2)``: the mirror field in nT at fixed second
+        invariant k (R_E nT^(1/2)), its slopes, and cot^2 of the equatorial pitch angle.
     foot : callable
         ``(r, sin_phi, cos_phi, foot_re, *arguments) -> B`` where the line meets the sphere of radius foot_re, nT.
     arguments : tuple of float
@@ -141,23 +142,24 @@ class MagneticTerms:
 class LineAverages(Protocol):
     """All that a field line contributes to the motion of the particles bound to it. Internal units; arrays broadcast.
 
-    A particle on the line through the equatorial point (r, phi) is given by cos2 = cos^2 of its equatorial pitch
-    angle, or by its second invariant k = integral of sqrt(B_m - B) ds between the mirror points.
+    A particle on the line through the equatorial point (r, phi) is given by cot2 = cot^2 of its equatorial pitch
+    angle = B_m/B_eq - 1, which keeps its digits at 90 degrees and near 0, or by its second invariant
+    k = integral of sqrt(B_m - B) ds between the mirror points.
     """
 
-    def second_invariant(self, cos2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
+    def second_invariant(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """k in R_E nT^(1/2)."""
         ...
 
-    def cos2_at(self, k: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
-        """cos^2 of the equatorial pitch angle of the particle with second invariant `k`."""
+    def cot2_at(self, k: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
+        """cot^2 of the equatorial pitch angle of the particle with second invariant `k`."""
         ...
 
-    def bounce_path(self, cos2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
+    def bounce_path(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """Speed times full bounce period, in R_E: the closed integral of ds / sqrt(1 - B/B_m)."""
         ...
 
-    def mirror_slopes(self, cos2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> tuple[Floats, Floats]:
+    def mirror_slopes(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> tuple[Floats, Floats]:
         """d ln B_m / dr (1/R_E) and d ln B_m / dphi (1/rad), both at fixed k."""
         ...
 
@@ -174,7 +176,7 @@ class LineAverages(Protocol):
         ...
 
     def bounce_average(
-        self, density: Callable[[Floats, Floats, Floats], Floats], cos2: ArrayLike, r: ArrayLike, phi: ArrayLike
+        self, density: Callable[[Floats, Floats, Floats], Floats], cot2: ArrayLike, r: ArrayLike, phi: ArrayLike
     ) -> Floats:
         """Average over a bounce of ``density(x, y, z)``, weighted with the time spent: ds / sqrt(1 - B/B_m)."""
         ...

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Mapping
 from difflib import get_close_matches
-from typing import Any, Iterable
+from typing import Any
 
 PREFIX = "driftrose"
 
@@ -41,7 +42,7 @@ class InputError(ValueError):
         if self.key:
             parts.append(self.key if self.value is None else f"{self.key} = {shown(self.value)}")
         parts.append(self.problem + (f"; {self.remedy}" if self.remedy else ""))
-        return " ".join(": ".join(parts).split())
+        return visible(" ".join(": ".join(parts).split()))
 
     def __str__(self) -> str:
         return self.line()
@@ -57,12 +58,21 @@ class InputError(ValueError):
         )
 
 
+def visible(text: str) -> str:
+    """`text` with control characters and the like escaped, so that it cannot act on a terminal."""
+    return "".join(c if c.isprintable() else c.encode("unicode_escape").decode() for c in text)
+
+
 def shown(value: Any, limit: int = 60) -> str:
     """`value` as it stands in the error line: run-file notation, one line, cut to `limit` characters."""
     if isinstance(value, bool):
         text = str(value).lower()
     elif isinstance(value, str):
         text = f'"{value}"'
+    elif isinstance(value, Mapping):
+        text = "{ " + ", ".join(f"{key} = {shown(member, limit)}" for key, member in value.items()) + " }"
+    elif isinstance(value, (list, tuple)):
+        text = "[" + ", ".join(shown(member, limit) for member in value) + "]"
     else:
         text = str(value)
     text = " ".join(text.split())

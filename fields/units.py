@@ -55,16 +55,18 @@ def mlt_from_phi(phi: ArrayLike) -> Floats:
     return np.where(mlt >= 24.0, 0.0, mlt)  # mod of a tiny negative number rounds up to 24
 
 
-def cos2_of_pitch(pitch_deg: ArrayLike) -> Floats:
-    """cos^2 of the equatorial pitch angle, without the loss of digits of 1 - sin^2 near 90 degrees."""
-    return np.sin(np.radians(90.0 - np.asarray(pitch_deg, dtype=float))) ** 2
+def cot2_of_pitch(pitch_deg: ArrayLike) -> Floats:
+    """cot^2 of the equatorial pitch angle, with full relative accuracy near 90 degrees and near 0."""
+    pitch = np.asarray(pitch_deg, dtype=float)
+    return (np.sin(np.radians(90.0 - pitch)) / np.sin(np.radians(pitch))) ** 2
 
 
-def pitch_of_cos2(cos2: ArrayLike) -> Floats:
-    """Equatorial pitch angle in (0, 90] degrees from its cos^2."""
-    c2 = np.asarray(cos2, dtype=float)
+def pitch_of_cot2(cot2: ArrayLike) -> Floats:
+    """Equatorial pitch angle in (0, 90] degrees from its cot^2."""
+    cot = np.sqrt(np.asarray(cot2, dtype=float))
+    steep = cot > 1.0
     return np.where(
-        c2 < 0.5,
-        90.0 - np.degrees(np.arcsin(np.sqrt(np.minimum(c2, 0.5)))),
-        np.degrees(np.arcsin(np.sqrt(np.maximum(1.0 - c2, 0.0)))),
+        steep,
+        np.degrees(np.arctan(1.0 / np.where(steep, cot, 1.0))),
+        90.0 - np.degrees(np.arctan(np.where(steep, 0.0, cot))),
     )

@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+
+from fields.drivers import Driver
 
 if TYPE_CHECKING:
     import xarray
@@ -58,7 +61,7 @@ END = (
     Column("end", "energy_keV", "keV", "kinetic energy at the end"),
     Column("end", "pitch_deg", "deg", "equatorial pitch angle at the end"),
     Column("end", "cause", "1", "why the particle ended", "u1"),
-    Column("end", "turns", "1", "turns around the Earth from release to end, eastward positive, in the order of tracing"),
+    Column("end", "turns", "1", "turns around the Earth from release to end, eastward positive, as traced"),
     Column("end", "loss_cone_h", "h", "run time at which the particle first stood inside the loss cone; NaN if never"),
 )
 
@@ -99,6 +102,12 @@ class Result:
         Columns by name; units in `tracer.records`.
     attrs : dict
         Provenance: format, versions, run file, hashes, start, measured error, work.
+    population_names, species_names : tuple of str
+        What the numbers in ``particle["population"]`` and ``particle["species"]`` stand for.
+    drivers : tuple of Driver
+        What varied in time.
+    work : dict of float
+        What the run took, when this process made it: steps, seconds, particles per second. Never stored.
     """
 
     time_h: np.ndarray
@@ -108,14 +117,26 @@ class Result:
     attrs: dict[str, Any]
     population_names: tuple[str, ...]
     species_names: tuple[str, ...]
+    drivers: tuple[Driver, ...] = ()
+    work: dict[str, float] = field(default_factory=dict)
 
     @property
     def count(self) -> int:
         """Number of particles."""
         return int(self.end["cause"].size)
 
+    def track_rows(self, name: str, rows: np.ndarray | slice) -> np.ndarray:
+        """Tracks of some particles, shape (n_row, n_time); from a file no others are read."""
+        read = getattr(self.track, "rows", None)
+        return np.asarray(read(name, rows) if read else self.track[name][rows])
+
     def to_xarray(self) -> xarray.Dataset:
-        """One Dataset: tracks on (particle_index, time), the rest on particle_index, prefixed ``initial_`` and ``end_``."""
+        """One Dataset: tracks on (particle_index, time); on particle_index the rest, as ``initial_*`` and ``end_*``."""
         from tracer.labelled import dataset
 
         return dataset(self)
+
+
+def flag_word(name: str) -> str:
+    """`name` as one word of a CF ``flag_meanings``: letters, digits and ``_ - . + @`` only."""
+    return re.sub(r"[^0-9A-Za-z_.+@-]", "_", name) or "_"

@@ -125,11 +125,13 @@ class Output:
 
 @dataclass(frozen=True)
 class Origin:
-    """Where a scenario came from: the run file's name as given, its full text, and the hashes of its inputs."""
+    """Where a scenario came from: the run file's name as given, its full text, the hashes of its inputs, and what the reader of
+    the file noticed that is no fault."""
 
     file: str = ""
     text: str = ""
     input_sha256: dict[str, str] = field(default_factory=dict)
+    remarks: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, eq=False)

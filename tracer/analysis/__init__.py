@@ -1,0 +1,1 @@
+"""What results mean: plans and reductions, pure functions without files."""

@@ -1,0 +1,1 @@
+"""Readers of histories: CSV tables and published index files, told apart by content."""

@@ -1,0 +1,34 @@
+"""Tolerances of the tests, each with its reason. A test names the row it uses."""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+
+class Tolerance(NamedTuple):
+    """A relative bound, unless the reason says otherwise."""
+
+    bound: float
+    reason: str
+
+
+TABLE = {
+    "rounding": Tolerance(1e-14, "the same formula in another order of operations"),
+    "point function": Tolerance(1e-14, "numpy's array and scalar loops may differ in the last bits of power and cbrt"),
+    "bounce integral": Tolerance(1e-10, "what is asked of T and Y from 1 to 89.9 degrees, and of Y / cos^2 above"),
+    "slow approximation T": Tolerance(1e-2, "Schulz & Lanzerotti (1974): their closed form of T is good to 1 %"),
+    "fast approximation T": Tolerance(3e-2, "Hamlin et al. (1961): their line through T is good to 3 %"),
+    "traced line": Tolerance(1e-11, "tracing at rtol 1e-13; near 90 degrees the fit of B about the equator adds 4e-12"),
+    "traced slope": Tolerance(1e-10, "eighth-order differences in steps of 2 %: 64 h^8 = 2e-12, and traced k over h"),
+    "referee line": Tolerance(1e-9, "adaptive quadrature with algebraic weights along a second, independent tracing"),
+    "difference of slopes": Tolerance(1e-9, "central differences of a quantity known to 1e-12, steps of 2 %"),
+    "potential slope": Tolerance(1e-10, "eighth-order differences of a closed form, steps of 1 %"),
+    "field derivative": Tolerance(1e-9, "eighth-order differences of B in steps of 1 % of r, relative to B / r"),
+    "drift terms": Tolerance(1e-10, "what the kernel fits of the bounce integrals may add, against traced lines"),
+    "closed form": Tolerance(1e-9, "root finding on closed-form potentials"),
+}
+
+
+def bound(name: str) -> float:
+    """The bound of a row."""
+    return TABLE[name].bound

@@ -1,0 +1,94 @@
+"""From the global error that is asked for to the local one that the kernel takes, and back to the error that was met."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from fields.units import Floats
+from tracer.integrate import advance, prepare
+from tracer.kernels.build import Kernel
+from tracer.scenario import Scenario
+
+PILOTS = 384
+PILOT_SEED = 20270304
+AUDIT_SEED = 20270305
+COARSE, FINE = 1e-2, 1e-3  # the pilot's two local tolerances: of the target, and of the coarse one
+SAFETY = 0.25
+LOOSEST, FINEST = 0.1, 1e-14  # of the target; R_E
+MOST_LENIENT = 30.0  # times the coarse tolerance: no further than the pilot can vouch for
+
+
+@dataclass(frozen=True)
+class Errors:
+    """Distance between end positions of the same particles at two tolerances, R_E: quantiles over `count` particles."""
+
+    median: float
+    most: float
+    worst: float
+    count: int
+
+
+@dataclass(frozen=True)
+class Pilot:
+    """What the pilot found: the local tolerance to use, and the work a particle takes with it."""
+
+    local_tolerance: float
+    steps: float
+
+
+def sample(scenario: Scenario, size: int, seed: int) -> np.ndarray:
+    """Sorted indices of `size` particles drawn without repetition; all of them when there are no more."""
+    if scenario.count <= size:
+        return np.arange(scenario.count)
+    return np.sort(np.random.default_rng(seed).choice(scenario.count, size, replace=False))
+
+
+def states_of(scenario: Scenario, index: np.ndarray) -> Floats:
+    """Kernel states of scattered particles."""
+    return np.concatenate([prepare(scenario, int(i), int(i) + 1).state for i in index])
+
+
+def separation(end: Floats, other: Floats) -> Floats:
+    """Distance in R_E between two sets of end states; infinite where they ended for different causes.
+
+    The angle is compared unwrapped, so that a lost turn counts.
+    """
+    angle = 2.0 * np.pi * (end[:, 6] - other[:, 6])
+    apart = np.hypot(end[:, 1] - other[:, 1], other[:, 1] * angle)
+    return np.asarray(np.where(end[:, 5] == other[:, 5], apart, np.inf))
+
+
+def quantiles(apart: Floats) -> Errors:
+    """50, 99 and 100 %, by the nearest of the larger values: no interpolation into an infinite tail."""
+    ranked = np.sort(apart)
+    at = [min(int(np.ceil(share * ranked.size)) - 1, ranked.size - 1) for share in (0.5, 0.99, 1.0)]
+    return Errors(*(float(ranked[max(i, 0)]) for i in at), count=int(ranked.size))
+
+
+def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
+    """Find the local tolerance with which 99 % of the ends fall within the target.
+
+    A sample is traced at two local tolerances. The finer one stands for the truth, the difference is the error of the coarser one, and
+    errors go as the local tolerance (the method holds its error per step), so the wanted tolerance follows by proportion.
+    """
+    target = scenario.output.tolerance_re
+    state = states_of(scenario, sample(scenario, PILOTS, PILOT_SEED))
+    coarse = max(COARSE * target, FINEST / FINE)
+    rough, _ = advance(scenario, kernel, state, coarse, np.empty(0))
+    fine, _ = advance(scenario, kernel, state, FINE * coarse, np.empty(0))
+    found = quantiles(separation(rough, fine)).most
+    factor = min(SAFETY * target / max(found, 1e-300), MOST_LENIENT)
+    local = float(np.clip(coarse * factor, FINEST, LOOSEST * target))
+    # steps go as the eighth root of the tolerance
+    steps = float((rough[:, 8] + rough[:, 9]).mean() * (coarse / local) ** 0.125)
+    return Pilot(local, steps)
+
+
+def audit(scenario: Scenario, kernel: Kernel, local_tolerance: float) -> Errors:
+    """Re-run a sample, other than the pilot's, a thousand times finer, and say how far the ends lie apart."""
+    state = states_of(scenario, sample(scenario, PILOTS, AUDIT_SEED))
+    kept, _ = advance(scenario, kernel, state, local_tolerance, np.empty(0))
+    finer, _ = advance(scenario, kernel, state, max(FINE * local_tolerance, FINEST / 10), np.empty(0))
+    return quantiles(separation(kept, finer))

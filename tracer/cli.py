@@ -1,0 +1,162 @@
+"""The command ``driftrose``: parse, call, print, exit status. Each command imports what it needs when it runs."""
+
+from __future__ import annotations
+
+import json
+import signal
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+from typing import Any, NoReturn
+
+import click
+
+from fields.errors import PREFIX, InputError
+from tracer import __version__
+from tracer.stopping import Stopped
+
+DONE, INTERNAL, BAD_INPUT, STOPPED = 0, 1, 2, 3
+
+
+@click.group(context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(__version__, prog_name=PREFIX)
+def command() -> None:
+    """Trace charged particles as they drift through the inner magnetosphere.
+
+    A run file says which storm, fields and particles. Start with `driftrose new storm.toml`.
+    """
+
+
+@command.command()
+@click.argument("file", type=click.Path())
+@click.option("--like", default="storm", show_default=True, metavar="NAME", help="The shipped scenario to copy.")
+def new(file: str, like: str) -> None:
+    """Write a commented run file to start from; never overwrites."""
+    from tracer.templates import new_runfile
+
+    for path in new_runfile(file, like):
+        click.echo(f"wrote {path}")
+
+
+@command.command()
+@click.argument("name", required=False)
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object.")
+def models(name: str | None, as_json: bool) -> None:
+    """List the field models, or one with its parameters, units and references."""
+    from tracer.listing import described, text
+
+    found = described(name)
+    click.echo(json.dumps(found, indent=2) if as_json else text(found, whole=name is not None))
+
+
+@command.command()
+@click.argument("run", type=click.Path())
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object.")
+def check(run: str, as_json: bool) -> None:
+    """Validate RUN; say what it would compute and cost, and where drift theory holds."""
+    from tracer.preview import check as preview
+    from tracer.runfile import load
+    from tracer.tables import preview_text
+
+    found = preview(load(run))
+    click.echo(json.dumps(found, indent=2) if as_json else preview_text(found))
+
+
+@command.command()
+@click.argument("run", type=click.Path())
+@click.option("-o", "--output", type=click.Path(), help="Trajectory file to write.  [default: RUN's stem.h5, here]")
+@click.option("--overwrite", is_flag=True, help="Replace an existing file, once the new one is whole.")
+@click.option("--threads", type=click.IntRange(1, 1024), help="Threads to use.  [default: all processors]")
+@click.option("--quiet", is_flag=True, help="No progress, no closing table.")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object in place of the table.")
+def trace(run: str, output: str | None, overwrite: bool, threads: int | None, quiet: bool, as_json: bool) -> None:
+    """Trace all particles of RUN into a trajectory file."""
+    from tracer.analysis.summary import sentences
+    from tracer.pipeline import trace as trace_run
+    from tracer.runfile import load
+    from tracer.tables import closing, closing_text
+    from tracer.terminal import watcher
+
+    out = output or f"{Path(run).stem}.h5"
+    scenario = load(run)
+    for warning in (*scenario.field.warnings(), *scenario.origin.remarks):
+        click.echo(f"{PREFIX}: warning: {warning}", err=True)
+    result = trace_run(scenario, out, overwrite=overwrite, threads=threads, watcher=watcher(quiet))
+    if as_json:
+        click.echo(json.dumps({"file": out, **closing(result)}, indent=2))
+    elif not quiet:
+        click.echo(closing_text(result))
+        click.echo("")
+        for line in sentences(result):
+            click.echo(line)
+        click.echo(f"wrote {out}")
+
+
+@command.command()
+@click.argument("file", type=click.Path())
+@click.option("-o", "--output", "directory", type=click.Path(), default=".", help="Folder for the figures.  [default: here]")
+@click.option("--format", "format_", type=click.Choice(["png", "svg", "pdf"]), default="png", show_default=True)
+@click.option("--overwrite", is_flag=True, help="Replace existing figures.")
+def draw(file: str, directory: str, format_: str, overwrite: bool) -> None:
+    """Draw the figures that fit FILE."""
+    from tracer.figures import draw as draw_file
+
+    for path in draw_file(file, directory, format=format_, overwrite=overwrite):
+        click.echo(f"wrote {path}")
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command and return its exit status: 0 done, 1 internal failure, 2 bad input, 3 stopped early."""
+    previous = _stop_on_terminate()
+    try:
+        command.main(args=None if arguments is None else list(arguments), prog_name=PREFIX, standalone_mode=False)
+        return DONE
+    except InputError as error:
+        click.echo(str(error), err=True)
+        return BAD_INPUT
+    except Stopped as error:
+        click.echo(f"{PREFIX}: {error}", err=True)
+        return STOPPED
+    except (KeyboardInterrupt, click.Abort):
+        click.echo(f"{PREFIX}: stopped", err=True)
+        return STOPPED
+    except click.ClickException as error:
+        error.show()
+        return error.exit_code
+    except click.exceptions.Exit as error:
+        return error.exit_code
+    except BrokenPipeError:
+        _close_stdout()
+        return DONE
+    except Exception as error:  # the one place that may not leak a fault as anything but status 1
+        _explain(error)
+        return INTERNAL
+    finally:
+        if previous is not None:
+            signal.signal(signal.SIGTERM, previous)
+
+
+def _stop_on_terminate() -> Any:
+    """Let SIGTERM do what Ctrl-C does; only the main thread may."""
+
+    def stop(*_: Any) -> NoReturn:
+        raise KeyboardInterrupt
+
+    try:
+        return signal.signal(signal.SIGTERM, stop)
+    except ValueError:
+        return None
+
+
+def _close_stdout() -> None:
+    """After the reader of a pipe has gone, keep the interpreter from writing to it once more."""
+    import os
+
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+
+
+def _explain(error: Exception) -> None:
+    import traceback
+
+    traceback.print_exception(error)
+    click.echo(f"{PREFIX}: internal failure ({type(error).__name__}); the lines above are for its makers", err=True)

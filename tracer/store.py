@@ -1,0 +1,22 @@
+"""The trajectory file (HDF5): `open` and `kind` read, `TrajectoryWriter` writes. No h5py but in ``store_*``."""
+
+from tracer.store_attrs import FORMAT, FORMAT_VERSION, digest, provenance
+from tracer.store_layout import ROWS, track_chunk
+from tracer.store_reader import Columns, kind, open
+from tracer.store_writer import TrajectoryWriter, check_output, expected_bytes, size_text
+
+__all__ = [
+    "FORMAT",
+    "FORMAT_VERSION",
+    "ROWS",
+    "Columns",
+    "TrajectoryWriter",
+    "check_output",
+    "digest",
+    "expected_bytes",
+    "kind",
+    "open",
+    "provenance",
+    "size_text",
+    "track_chunk",
+]

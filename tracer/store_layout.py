@@ -1,0 +1,173 @@
+"""The skeleton of a trajectory file: groups, datasets, chunks and labels, all but the numbers."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from typing import Any
+
+import h5py
+import numpy as np
+
+from fields.compose import Field
+from fields.drivers import Driver
+from tracer.records import GROUPS, Column, flag_word
+from tracer.scenario import Scenario
+from tracer.status import Cause
+from tracer.store_attrs import DIGEST, digest, iso_utc
+
+ROWS = 4096  # particles in a chunk of a column; batches of a multiple of it fill whole chunks
+TRACK_CHUNK_BYTES = 2**20
+LIBVER = ("v110", "v110")  # every piece of metadata carries a checksum; HDF5 1.10 (2016) and later read it
+
+TIME = Column("", "time", "", "run time", "f8")  # its unit holds the start
+PARTICLE_INDEX = Column("", "particle_index", "1", "index of the particle in the run", "i8")
+SINGLE_QUANTUM = float(np.finfo(np.float32).eps)
+
+
+def track_chunk(count: int, n_time: int, itemsize: int) -> tuple[int, int]:
+    """Chunk of a track: whole rows where they fit into `TRACK_CHUNK_BYTES`, their number a divisor of `ROWS`."""
+    columns = min(n_time, TRACK_CHUNK_BYTES // itemsize)
+    rows = min(ROWS, max(1, TRACK_CHUNK_BYTES // (columns * itemsize)))
+    return min(count, 2 ** (rows.bit_length() - 1)), columns
+
+
+def groups_of(scenario: Scenario) -> dict[str, tuple[Column, ...]]:
+    """The groups that the file of a scenario has, and their columns."""
+    return {name: columns for name, columns in GROUPS.items() if name != "track" or scenario.save_times_h.size}
+
+
+def build_skeleton(file: h5py.File, scenario: Scenario, attrs: Mapping[str, Any], allocate: bool) -> None:
+    """Make everything but the numbers; `allocate` takes the space of all chunks at once."""
+    count, n_time = scenario.count, scenario.save_times_h.size
+    write_attrs(file, {**attrs, "complete": False})
+    index = create(file, PARTICLE_INDEX, (count,), (min(count, ROWS),), allocate)
+    index.make_scale(PARTICLE_INDEX.name)
+    scales = [index]
+    if n_time:
+        start = iso_utc(scenario.start)
+        time = create(file, TIME, (n_time,), (min(n_time, ROWS),), allocate)
+        label(time, units=f"hours since {start}", standard_name="time", calendar="standard", axis="T")
+        time.make_scale(TIME.name)
+        scales.append(time)
+    for group, columns in groups_of(scenario).items():
+        parent = file.create_group(group)
+        for column in columns:
+            if group == "track":
+                single = scenario.output.tracks == "single"
+                dataset = _create_track(parent, column, (count, n_time), single, allocate)
+            else:
+                dataset = create(parent, column, (count,), (min(count, ROWS),), allocate)
+            for axis, scale in zip(dataset.dims, scales):
+                axis.attach_scale(scale)
+    if n_time:
+        file["track/time"] = file["time"]
+    _label_codes(file, scenario)
+    for number, (driver, unit, use) in enumerate(drivers_of(scenario.field)):
+        _create_driver(file.create_group(f"driver/{number}"), driver, unit, use, allocate)
+
+
+def fill_coordinates(file: h5py.File, scenario: Scenario) -> None:
+    """Write the numbers that are known before any particle is traced."""
+    if scenario.save_times_h.size:
+        file["time"][:] = scenario.save_times_h
+    step = 256 * ROWS
+    for first in range(0, scenario.count, step):
+        stop = min(first + step, scenario.count)
+        file["particle_index"][first:stop] = np.arange(first, stop)
+    for number, (driver, _, _) in enumerate(drivers_of(scenario.field)):
+        for name in ("start_h", "value", "slope"):
+            file[f"driver/{number}/{name}"][:] = getattr(driver, name)
+
+
+def write_attrs(file: h5py.File, attrs: Mapping[str, Any]) -> None:
+    """Set root attributes and the hash over all of them."""
+    for name, value in attrs.items():
+        file.attrs[name] = value
+    file.attrs[DIGEST] = digest(dict(file.attrs))
+
+
+def create(
+    parent: h5py.Group, column: Column, shape: tuple[int, ...], chunk: tuple[int, ...], allocate: bool
+) -> h5py.Dataset:
+    """An empty, chunked, checksummed dataset with its unit and name; floats are NaN until written."""
+    dtype = np.dtype(column.dtype)
+    plan = h5py.h5p.create(h5py.h5p.DATASET_CREATE)
+    plan.set_chunk(chunk)
+    plan.set_fletcher32()
+    plan.set_alloc_time(h5py.h5d.ALLOC_TIME_EARLY if allocate else h5py.h5d.ALLOC_TIME_INCR)
+    if dtype.kind == "f":
+        plan.set_fill_value(np.array(np.nan, dtype))
+    stored = h5py.enum_dtype({c.word: int(c) for c in Cause}, basetype="u1") if column.name == "cause" else dtype
+    kind = h5py.h5t.py_create(np.dtype(stored), logical=True)
+    space = h5py.h5s.create_simple(shape)
+    dataset = h5py.Dataset(h5py.h5d.create(parent.id, column.name.encode(), kind, space, plan))
+    label(dataset, units=column.unit, long_name=column.long_name)
+    if dtype.kind == "f" and column.group:
+        dataset.attrs["_FillValue"] = dtype.type(np.nan)
+    return dataset
+
+
+def label(item: h5py.Dataset | h5py.Group, **texts: str) -> None:
+    """Text for human readers; nothing here is read back, for such text has no checksum."""
+    for name, text in texts.items():
+        item.attrs[name] = text
+
+
+def drivers_of(field: Field) -> Iterator[tuple[Driver, str, str]]:
+    """The drivers of a field, with the unit of the parameter that each stands for and the places of its use."""
+    for driver in field.drivers:
+        used = [
+            (parameter.unit, f"{model.card.name} {parameter.name}")
+            for model in field.electric
+            for parameter in model.card.parameters
+            if getattr(model, parameter.name) is driver
+        ]
+        yield driver, (used[0][0] if used else "") or "1", ", ".join(use for _, use in used)
+
+
+def padded_bytes(dataset: h5py.Dataset) -> tuple[int, int]:
+    """Bytes that all chunks of a dataset take, checksums included, and the number of chunks."""
+    chunks = 1
+    for size, chunk in zip(dataset.shape, dataset.chunks):
+        chunks *= -(-size // chunk)
+    return chunks * (int(np.prod(dataset.chunks)) * dataset.dtype.itemsize + 4), chunks
+
+
+def _create_track(
+    parent: h5py.Group, column: Column, shape: tuple[int, int], single: bool, allocate: bool
+) -> h5py.Dataset:
+    stored = Column(column.group, column.name, column.unit, column.long_name, "f4") if single else column
+    dataset = create(parent, stored, shape, track_chunk(*shape, np.dtype(stored.dtype).itemsize), allocate)
+    if single:
+        dataset.attrs["relative_quantum"] = SINGLE_QUANTUM
+        label(dataset, comment="single precision: neighbouring values differ by relative_quantum of their size or less")
+    return dataset
+
+
+def _label_codes(file: h5py.File, scenario: Scenario) -> None:
+    populations = [p.name for p in scenario.populations]
+    _label_flags(file["particle/population"], range(len(populations)), populations)
+    species = [s.name for s in scenario.species]
+    _label_flags(file["particle/species"], range(len(species)), species)
+    _label_flags(file["end/cause"], [int(c) for c in Cause], [c.word for c in Cause])
+    label(file["end/cause"], comment="; ".join(f"{int(c)}: {c.sentence}" for c in Cause))
+
+
+def _label_flags(dataset: h5py.Dataset, values: Sequence[int], names: Sequence[str]) -> None:
+    dataset.attrs["flag_values"] = np.asarray(values, dtype=np.dtype(dataset.dtype.str))
+    label(dataset, flag_meanings=" ".join(flag_word(n) for n in names))
+
+
+def _create_driver(group: h5py.Group, driver: Driver, unit: str, use: str, allocate: bool) -> None:
+    size = driver.start_h.size
+    columns = (
+        Column("", "start_h", "h", "run time at which a segment starts"),
+        Column("", "value", unit, f"{driver.name} at the start of a segment"),
+        Column("", "slope", f"{unit} h^-1", f"change of {driver.name} along a segment"),
+    )
+    scale, *rest = (create(group, column, (size,), (min(size, ROWS),), allocate) for column in columns)
+    scale.make_scale("start_h")
+    for dataset in rest:
+        dataset.dims[0].attach_scale(scale)
+    label(group, name=driver.name, hold=driver.hold, use=use)
+    group.attrs["end_h"] = float(driver.end_h)
