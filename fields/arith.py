@@ -7,7 +7,8 @@ those whose compiled form is not their source (see ``tracer/kernels/arith.py``).
 
 from __future__ import annotations
 
-from typing import Any, Callable, TypeVar
+from collections.abc import Callable
+from typing import Any, TypeVar
 
 import numpy as np
 

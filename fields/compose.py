@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Any, Sequence
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -76,7 +77,8 @@ class Field:
         return self.equatorial_field(r_re, phi_from_mlt(mlt_h))
 
     def curvature_radius(self, r: ArrayLike, phi: ArrayLike) -> Floats:
-        """Radius of curvature of the field line where it crosses the equator, R_E; central differences, error about 1e-7.
+        """Radius of curvature of the field line where it crosses the equator, R_E; central differences, error about
+        1e-7.
 
         There B points along z and (b.grad) b is the change of B's equatorial part along z, over B.
         """

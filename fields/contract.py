@@ -8,8 +8,9 @@ the card and the `Term`.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any, Callable, ClassVar, Literal, Protocol
+from typing import TYPE_CHECKING, Any, ClassVar, Literal, Protocol
 
 import numpy as np
 
@@ -114,7 +115,7 @@ class Term:
 
     def at(self, time_h: float) -> tuple[float, ...]:
         """The arguments as numbers at one time."""
-        return tuple(a.at(time_h) if isinstance(a, Driver) else float(a) for a in self.arguments)
+        return tuple(float(a.at(time_h)) if isinstance(a, Driver) else float(a) for a in self.arguments)
 
 
 @dataclass(frozen=True)
@@ -126,8 +127,8 @@ class MagneticTerms:
     equator : callable
         ``(r, sin_phi, cos_phi, *arguments) -> B`` at the equator, nT.
     mirror : callable
-        ``(k, r, sin_phi, cos_phi, *arguments) -> (B_m, dB_m/dr, dB_m/dphi, cot2)``: the mirror field in nT at fixed second
-        invariant k (R_E nT^(1/2)), its slopes, and cot^2 of the equatorial pitch angle.
+        ``(k, r, sin_phi, cos_phi, *arguments) -> (B_m, dB_m/dr, dB_m/dphi, cot2)``: the mirror field in nT at fixed
+        second invariant k (R_E nT^(1/2)), its slopes, and cot^2 of the equatorial pitch angle.
     foot : callable
         ``(r, sin_phi, cos_phi, foot_re, *arguments) -> B`` where the line meets the sphere of radius foot_re, nT.
     arguments : tuple of float

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, field
+from typing import Literal
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -51,9 +52,9 @@ class Driver:
 
     def segment(self, time_h: ArrayLike, backward: bool = False) -> np.ndarray:
         """Index of the segment entered at `time_h`: the later one at a corner, the earlier one when `backward`."""
-        side = "left" if backward else "right"
+        side: Literal["left", "right"] = "left" if backward else "right"
         index = np.searchsorted(self.start_h, np.asarray(time_h, dtype=float), side=side) - 1
-        return np.clip(index, 0, self.start_h.size - 1)
+        return np.asarray(np.clip(index, 0, self.start_h.size - 1))
 
     def at(self, time_h: ArrayLike, backward: bool = False) -> Floats:
         """The value at `time_h`; at a corner the limit from the later side, from the earlier one when `backward`.

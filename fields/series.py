@@ -56,8 +56,8 @@ class Series:
     Raises
     ------
     InputError
-        When times are not rising, values not finite, a Kp lies outside 0 to 9, rows stand closer than `interval_h`, or
-        there are fewer than two rows and no `interval_h`.
+        When times are not rising, values not finite, a Kp lies outside 0 to 9, rows stand closer than `interval_h`,
+        or there are fewer than two rows and no `interval_h`.
     """
 
     name: str

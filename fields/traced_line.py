@@ -3,11 +3,11 @@
 What a model promises is used: symmetry about the equator, and one minimum of B on each line, at the equator. So only
 the northern half of a line is traced, ``dX/ds = B/|B|`` with DOP853.
 
-Along the line the excess ``E(s) = B(s)/B_eq - 1``, which at the mirror point is cot^2 of the equatorial pitch angle, is
-written as ``s^2 g(s^2)``; near the equator g is a short Chebyshev series in s^2, so that nothing cancels however near
-the pitch angle is to 90 degrees. The substitution ``s = s_m sin(theta)`` takes the square-root singularity out of the
-bounce integrals and leaves a smooth, even, periodic integrand, for which the midpoint rule in theta (Gauss-Chebyshev
-in s) converges geometrically.
+Along the line the excess ``E(s) = B(s)/B_eq - 1``, which at the mirror point is cot^2 of the equatorial pitch
+angle, is written as ``s^2 g(s^2)``; near the equator g is a short Chebyshev series in s^2, so that nothing cancels
+however near the pitch angle is to 90 degrees. The substitution ``s = s_m sin(theta)`` takes the square-root
+singularity out of the bounce integrals and leaves a smooth, even, periodic integrand, for which the midpoint rule
+in theta (Gauss-Chebyshev in s) converges geometrically.
 """
 
 from __future__ import annotations

@@ -41,12 +41,12 @@ def k_to_re_sqrtG(k: ArrayLike) -> Floats:
 
 def rest_energy_keV(mass_kg: ArrayLike) -> Floats:
     """Rest energy m c^2."""
-    return np.asarray(mass_kg, dtype=float) * SPEED_OF_LIGHT_M_S**2 / ELEMENTARY_CHARGE_C * 1e-3
+    return np.asarray(np.asarray(mass_kg, dtype=float) * SPEED_OF_LIGHT_M_S**2 / ELEMENTARY_CHARGE_C * 1e-3)
 
 
 def phi_from_mlt(mlt_h: ArrayLike) -> Floats:
     """Azimuth in radians, eastward from noon (SM x axis), in [-pi, pi), from magnetic local time in hours."""
-    return (np.mod(np.asarray(mlt_h, dtype=float), 24.0) - 12.0) * RAD_PER_MLT_HOUR
+    return np.asarray((np.mod(np.asarray(mlt_h, dtype=float), 24.0) - 12.0) * RAD_PER_MLT_HOUR)
 
 
 def mlt_from_phi(phi: ArrayLike) -> Floats:
@@ -58,7 +58,7 @@ def mlt_from_phi(phi: ArrayLike) -> Floats:
 def cot2_of_pitch(pitch_deg: ArrayLike) -> Floats:
     """cot^2 of the equatorial pitch angle, with full relative accuracy near 90 degrees and near 0."""
     pitch = np.asarray(pitch_deg, dtype=float)
-    return (np.sin(np.radians(90.0 - pitch)) / np.sin(np.radians(pitch))) ** 2
+    return np.asarray((np.sin(np.radians(90.0 - pitch)) / np.sin(np.radians(pitch))) ** 2)
 
 
 def pitch_of_cot2(cot2: ArrayLike) -> Floats:

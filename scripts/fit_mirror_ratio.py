@@ -1,8 +1,8 @@
 """Print the polynomial of fields/magnetic/mirror_ratio.py and its error between the nodes.
 
-In a dipole B_m/B_eq depends on kappa = Y(y)/y alone. With z = (1 + kappa)^(-1/3), which runs from 1 (90 degrees) to 0 (field aligned),
-g(z) = (B_m/B_eq - 1) / (kappa (1 + kappa)) is smooth on all of [0, 1]: integrals to a mirror point near the Earth's centre expand
-in cos^2 of its latitude, which goes as y^(2/3), hence the cube root.
+In a dipole B_m/B_eq depends on kappa = Y(y)/y alone. With z = (1 + kappa)^(-1/3), which runs from 1 (90 degrees) to
+0 (field aligned), g(z) = (B_m/B_eq - 1) / (kappa (1 + kappa)) is smooth on all of [0, 1]: integrals to a mirror
+point near the Earth's centre expand in cos^2 of its latitude, which goes as y^(2/3), hence the cube root.
 """
 
 from __future__ import annotations

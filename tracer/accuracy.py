@@ -1,4 +1,5 @@
-"""From the global error that is asked for to the local one that the kernel takes, and back to the error that was met."""
+"""From the global error that is asked for to the local one that the kernel takes, and back to the error that was
+met."""
 
 from __future__ import annotations
 
@@ -22,7 +23,8 @@ MOST_LENIENT = 30.0  # times the coarse tolerance: no further than the pilot can
 
 @dataclass(frozen=True)
 class Errors:
-    """Distance between end positions of the same particles at two tolerances, R_E: quantiles over `count` particles."""
+    """Distance between end positions of the same particles at two tolerances, R_E: quantiles over `count`
+    particles."""
 
     median: float
     most: float
@@ -64,14 +66,16 @@ def quantiles(apart: Floats) -> Errors:
     """50, 99 and 100 %, by the nearest of the larger values: no interpolation into an infinite tail."""
     ranked = np.sort(apart)
     at = [min(int(np.ceil(share * ranked.size)) - 1, ranked.size - 1) for share in (0.5, 0.99, 1.0)]
-    return Errors(*(float(ranked[max(i, 0)]) for i in at), count=int(ranked.size))
+    median, most, worst = (float(ranked[max(i, 0)]) for i in at)
+    return Errors(median, most, worst, int(ranked.size))
 
 
 def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
     """Find the local tolerance with which 99 % of the ends fall within the target.
 
-    A sample is traced at two local tolerances. The finer one stands for the truth, the difference is the error of the coarser one, and
-    errors go as the local tolerance (the method holds its error per step), so the wanted tolerance follows by proportion.
+    A sample is traced at two local tolerances. The finer one stands for the truth, the difference is the error of
+    the coarser one, and errors go as the local tolerance (the method holds its error per step), so the wanted
+    tolerance follows by proportion.
     """
     target = scenario.output.tolerance_re
     state = states_of(scenario, sample(scenario, PILOTS, PILOT_SEED))

@@ -94,7 +94,7 @@ def trace(run: str, output: str | None, overwrite: bool, threads: int | None, qu
 
 @command.command()
 @click.argument("file", type=click.Path())
-@click.option("-o", "--output", "directory", type=click.Path(), default=".", help="Folder for the figures.  [default: here]")
+@click.option("-o", "--output", "directory", type=click.Path(), default=".", help="Folder for them.  [default: here]")
 @click.option("--format", "format_", type=click.Choice(["png", "svg", "pdf"]), default="png", show_default=True)
 @click.option("--overwrite", is_flag=True, help="Replace existing figures.")
 def draw(file: str, directory: str, format_: str, overwrite: bool) -> None:

@@ -1,4 +1,5 @@
-"""Consecutive particles of a run through the compiled kernel: initial state in, columns in file units out. No files."""
+"""Consecutive particles of a run through the compiled kernel: initial state in, columns in file units out. No
+files."""
 
 from __future__ import annotations
 
@@ -24,7 +25,7 @@ DTYPES = {(c.group, c.name): c.dtype for c in (*PARTICLE, *TRACK, *END)}
 Tick = Callable[[int], None]
 
 
-class Interrupted(Exception):
+class Interrupted(Exception):  # noqa: N818 - nothing went wrong
     """The caller asked to stop between two batches."""
 
 

@@ -1,6 +1,8 @@
-"""Energy and pitch angle to adiabatic invariants and back; periods, drift rates and the Hamiltonian. User units, numpy broadcasting.
+"""Energy and pitch angle to adiabatic invariants and back; periods, drift rates and the Hamiltonian. User units,
+numpy broadcasting.
 
-Everything that the field contributes comes through `fields.contract.LineAverages`; nothing here knows what field it is.
+Everything that the field contributes comes through `fields.contract.LineAverages`; nothing here knows what field it
+is.
 """
 
 from __future__ import annotations
@@ -12,9 +14,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fields import constants
-from fields.catalogue import MAGNETIC
+from fields import Dipole, constants
 from fields.compose import Field
+from fields.contract import LineAverages
 from fields.errors import InputError, nearest
 from fields.units import (
     RAD_PER_MLT_HOUR,
@@ -107,7 +109,8 @@ def momentum_term(energy_keV: Floats, rest_keV: ArrayLike) -> Floats:
 
 
 def energy_of(mu: ArrayLike, mirror_nT: ArrayLike, rest_keV: float) -> Floats:
-    """Kinetic energy in keV from mu (keV/nT) and the mirror field; no difference of roots, so an eV ion keeps its digits."""
+    """Kinetic energy in keV from mu (keV/nT) and the mirror field; no difference of roots, so an eV ion keeps its
+    digits."""
     w = np.asarray(mu, dtype=float) * np.asarray(mirror_nT, dtype=float)
     return np.asarray(2.0 * w / (1.0 + np.sqrt(1.0 + 2.0 * w / rest_keV)))
 
@@ -117,15 +120,16 @@ def invariants(
 ) -> Invariants:
     """First and second invariant of a particle on the equator.
 
-    ``mu = p_perp^2 / (2 m B)`` with the rest mass; ``K = integral of sqrt(B_m - B) ds`` between the mirror points (Roederer 1970, Dynamics of
-    Geomagnetically Trapped Radiation).
+    ``mu = p_perp^2 / (2 m B)`` with the rest mass; ``K = integral of sqrt(B_m - B) ds`` between the mirror points
+    (Roederer 1970, Dynamics of Geomagnetically Trapped Radiation).
 
     Parameters
     ----------
     field : fields.Field
     species : str or Species
     energy_keV, pitch_deg, r_re, mlt_h : array_like
-        Kinetic energy, equatorial pitch angle (0 excluded, up to 90), equatorial distance and magnetic local time; they broadcast.
+        Kinetic energy, equatorial pitch angle (0 excluded, up to 90), equatorial distance and magnetic local time;
+        they broadcast.
 
     Returns
     -------
@@ -154,7 +158,8 @@ def from_invariants(
     r_re: ArrayLike,
     mlt_h: ArrayLike,
 ) -> Motion:
-    """Energy and equatorial pitch angle where a particle of given invariants crosses the equator: the inverse of `invariants`."""
+    """Energy and equatorial pitch angle where a particle of given invariants crosses the equator: the inverse of
+    `invariants`."""
     rest = float(rest_energy_keV(species_named(species).mass_kg))
     mu = mu_from_MeV_per_G(checked("mu_MeV_per_G", mu_MeV_per_G, 0.0))
     k = k_from_re_sqrtG(checked("K_re_sqrtG", K_re_sqrtG, 0.0))
@@ -170,8 +175,8 @@ def periods(
 ) -> Periods:
     """Gyro-, bounce- and drift period, arguments as of `invariants`; infinite where the motion stops (zero energy).
 
-    The gyroperiod is that at the equator, ``2 pi gamma m / (|q| B)``; the bounce period the closed integral of ``ds / v_par``; the drift
-    period ``2 pi`` over the local rate of the gradient-curvature drift.
+    The gyroperiod is that at the equator, ``2 pi gamma m / (|q| B)``; the bounce period the closed integral of ``ds
+    / v_par``; the drift period ``2 pi`` over the local rate of the gradient-curvature drift.
     """
     kind = species_named(species)
     rest = float(rest_energy_keV(kind.mass_kg))
@@ -253,17 +258,19 @@ def _slopes(
 
 
 def bounce_T(pitch_deg: ArrayLike) -> Floats:
-    """The dipole's bounce integral T: the bounce period is ``4 r T / v`` (Hamlin et al. 1961), by exact quadrature."""
+    """The dipole's bounce integral T: the bounce period is ``4 r T / v`` (Hamlin et al. 1961), by exact
+    quadrature."""
     cot2 = cot2_of_pitch(checked("pitch_deg", pitch_deg, 0.0, 90.0, low_open=True))
     return np.asarray(_unit_dipole().bounce_path(cot2, 1.0, 0.0) / 4.0)
 
 
 def bounce_Y(pitch_deg: ArrayLike) -> Floats:
-    """The dipole's bounce integral Y: ``K = R_E sqrt(B0 / r) Y / sin(pitch)`` (Schulz & Lanzerotti 1974), by exact quadrature."""
+    """The dipole's bounce integral Y: ``K = R_E sqrt(B0 / r) Y / sin(pitch)`` (Schulz & Lanzerotti 1974), by exact
+    quadrature."""
     pitch = checked("pitch_deg", pitch_deg, 0.0, 90.0, low_open=True)
     cot2 = cot2_of_pitch(pitch)
     return np.asarray(_unit_dipole().second_invariant(cot2, 1.0, 0.0) / np.sqrt(1.0 + cot2))
 
 
-def _unit_dipole() -> Any:
-    return MAGNETIC["dipole"](b0_nT=1.0).lines()
+def _unit_dipole() -> LineAverages:
+    return Dipole(b0_nT=1.0).lines()

@@ -132,7 +132,8 @@ def chunks(scenario: Scenario, kernel: Kernel, tolerance: float, threads: int, w
 
 
 def chunk_size(count: int, threads: int) -> int:
-    """Particles of a chunk: whole rows of the file's chunks, or less when there would not be enough for all threads."""
+    """Particles of a chunk: whole rows of the file's chunks, or less when there would not be enough for all
+    threads."""
     share = -(-count // (4 * threads))
     return int(np.clip(share, 1, CHUNK))
 

@@ -1,7 +1,7 @@
 """The initial state of the particles: draws and grids. Random numbers are made here and nowhere else.
 
-A particle's numbers depend on its population and its index in it alone, so the same bits come out however a run is cut
-into chunks, and memory is bounded by the slice asked for.
+A particle's numbers depend on its population and its index in it alone, so the same bits come out however a run is
+cut into chunks, and memory is bounded by the slice asked for.
 
 Seeds are used as given. Two populations with the same seed, count and draw therefore share their points of the unit
 cube (species compared particle by particle is one use); give them different seeds for independent samples.
@@ -135,10 +135,11 @@ def random_points(population: Population, dimensions: int, first: int, stop: int
 def sobol_points(population: Population, dimensions: int, first: int, stop: int) -> Floats:
     """Points `first` to `stop` of scipy's scrambled Sobol sequence, one dimension for each range.
 
-    A population of any count holds the first `count` points: those of the next power of two, cut. Every 2^k consecutive
-    points from a multiple of 2^k on are balanced (as a digital net). With a count that is not a power of two the last,
-    broken block is not: the mean of a smooth function then errs like 1/count instead of nearly count^(-3/2) (Owen 1997,
-    Ann. Stat. 25, 1541; Owen 2020, arXiv:2008.08051), and strata that a whole net fills equally differ by some points.
+    A population of any count holds the first `count` points: those of the next power of two, cut. Every 2^k
+    consecutive points from a multiple of 2^k on are balanced (as a digital net). With a count that is not a power
+    of two the last, broken block is not: the mean of a smooth function then errs like 1/count instead of nearly
+    count^(-3/2) (Owen 1997, Ann. Stat. 25, 1541; Owen 2020, arXiv:2008.08051), and strata that a whole net fills
+    equally differ by some points.
 
     The state of the generator after n points is the exclusive or of one direction for each set bit of n (Antonov &
     Saleev 1979: the Gray code is linear), so a slice needs the points 0, 1, 2, 4, ... only. They cost one walk over
@@ -204,7 +205,8 @@ def _log(u: Floats, begin: float, end: float) -> Floats:
 
 
 def _isotropic(u: Floats, begin: float, end: float) -> Floats:
-    """cos a uniform: from the complement near 90 degrees, from 1 - cos a = 2 sin^2(a/2) near 0, so no digits cancel."""
+    """cos a uniform: from the complement near 90 degrees, from 1 - cos a = 2 sin^2(a/2) near 0, so no digits
+    cancel."""
     cosine = _linear(u, *np.sin(np.radians([90.0 - begin, 90.0 - end])))
     half_versine = _linear(u, *np.sin(np.radians([begin / 2, end / 2])) ** 2)
     near_90 = 90.0 - np.degrees(np.arcsin(np.clip(cosine, -1.0, 1.0)))

@@ -35,8 +35,8 @@ def check(scenario: Scenario, threads: int | None = None) -> dict[str, Any]:
     Returns
     -------
     dict
-        Plain values: ``particles``, ``populations`` (periods in seconds and validity ratios), ``work``, ``memory_bytes``,
-        ``disk_bytes``, ``warnings``.
+        Plain values: ``particles``, ``populations`` (periods in seconds and validity ratios), ``work``,
+        ``memory_bytes``, ``disk_bytes``, ``warnings``.
     """
     many = threads or processors()
     offset, described = 0, []

@@ -131,7 +131,8 @@ class Result:
         return np.asarray(read(name, rows) if read else self.track[name][rows])
 
     def to_xarray(self) -> xarray.Dataset:
-        """One Dataset: tracks on (particle_index, time); on particle_index the rest, as ``initial_*`` and ``end_*``."""
+        """One Dataset: tracks on (particle_index, time); on particle_index the rest, as ``initial_*`` and
+        ``end_*``."""
         from tracer.labelled import dataset
 
         return dataset(self)

@@ -50,8 +50,8 @@ class Quantity:
         ``number`` (one value), ``range`` (two values: from, to) or ``list`` (grids only).
     values : tuple of float
     spacing : str
-        How a range is filled. ``linear``; ``area``: uniform in r^2; ``log``: uniform in ln; ``isotropic``: uniform in the cosine of
-        the pitch angle (density ~ sin a).
+        How a range is filled. ``linear``; ``area``: uniform in r^2; ``log``: uniform in ln; ``isotropic``: uniform
+        in the cosine of the pitch angle (density ~ sin a).
     n : int
         Number of grid points of a range; 0 in a draw.
     """
@@ -125,8 +125,8 @@ class Output:
 
 @dataclass(frozen=True)
 class Origin:
-    """Where a scenario came from: the run file's name as given, its full text, the hashes of its inputs, and what the reader of
-    the file noticed that is no fault."""
+    """Where a scenario came from: the run file's name as given, its full text, the hashes of its inputs, and what
+    the reader of the file noticed that is no fault."""
 
     file: str = ""
     text: str = ""
@@ -166,7 +166,8 @@ class Scenario:
 
     @cached_property
     def save_times_h(self) -> Floats:
-        """Run times at which tracks are saved; strictly monotonic from 0 to `end_h`; empty when only ends are saved."""
+        """Run times at which tracks are saved; strictly monotonic from 0 to `end_h`; empty when only ends are
+        saved."""
         step = self.output.every_min / 60.0
         if step == 0:
             return np.empty(0)

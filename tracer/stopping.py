@@ -3,5 +3,5 @@
 from __future__ import annotations
 
 
-class Stopped(RuntimeError):
+class Stopped(RuntimeError):  # noqa: N818 - the name is part of the public interface
     """A run that stopped before its end, for a reason outside its input."""

@@ -88,7 +88,8 @@ def versions() -> dict[str, str]:
 
 @cache
 def processor() -> dict[str, str]:
-    """Model and instruction sets of the processor: compiled code, and so the last bits of a result, depend on them."""
+    """Model and instruction sets of the processor: compiled code, and so the last bits of a result, depend on
+    them."""
     listed: dict[str, str] = {}
     try:
         for line in Path("/proc/cpuinfo").read_text(encoding="utf-8", errors="replace").splitlines():

@@ -59,12 +59,13 @@ def open(path: str | os.PathLike[str]) -> Result:
         count = _checked_shapes(file, str(path))
         time = np.asarray(_read(path, file, "time")) if "time" in file else np.empty(0)
         drivers = tuple(_driver(path, file, n, **texts) for n, texts in enumerate(json.loads(attrs["drivers"])))
-    groups = {name: Columns(path, columns, count) for name, columns in GROUPS.items()}
-    if not time.size:
-        groups["track"] = Columns(path, (), count)
+    kept = {name: columns if time.size or name != "track" else () for name, columns in GROUPS.items()}
+    groups = {name: Columns(path, columns, count) for name, columns in kept.items()}
     return Result(
         time_h=time,
-        **groups,
+        particle=groups["particle"],
+        track=groups["track"],
+        end=groups["end"],
         attrs=attrs,
         population_names=tuple(json.loads(attrs["population_names"])),
         species_names=tuple(json.loads(attrs["species_names"])),

@@ -91,8 +91,8 @@ def check_output(path: str | os.PathLike[str], scenario: Scenario, overwrite: bo
 class TrajectoryWriter:
     """Context manager that writes one trajectory file, chunk by chunk.
 
-    It stands under `path` + ``.part``, locked, with the space of all datasets taken from the start; `finish` completes
-    it and moves it into place. Left without `finish`, by an exception or not, the ``.part`` is removed.
+    It stands under `path` + ``.part``, locked, with the space of all datasets taken from the start; `finish`
+    completes it and moves it into place. Left without `finish`, by an exception or not, the ``.part`` is removed.
 
     Parameters
     ----------

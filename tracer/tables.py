@@ -75,7 +75,8 @@ def preview_text(found: dict[str, Any]) -> str:
     lines += [
         "",
         f"  {found['particles']:,} particles at {found['saved_times']} saved times",
-        f"  about {work['seconds']:.1f} s on {work['threads']} threads: {work['steps_per_particle']:.0f} steps a particle, "
+        f"  about {work['seconds']:.1f} s on {work['threads']} threads: "
+        f"{work['steps_per_particle']:.0f} steps a particle, "
         f"{work['right_hand_sides']:.2g} right-hand sides, local tolerance {work['local_tolerance_re']:.1e} R_E",
         f"  about {size_text(found['memory_bytes'])} of memory, {size_text(found['disk_bytes'])} of disk",
     ]
@@ -96,7 +97,8 @@ def _population_lines(population: dict[str, Any]) -> list[str]:
         lines.append(f"    {name + ' period':14} {text}" + ("" if values is None else "   (least / median / most)"))
     for ratio in population["validity"]:
         flag = f"   {ratio['share_above']:.0%} above 0.1" if ratio["share_above"] else ""
-        lines.append(f"    {ratio['name']:34} {ratio['median']:.1e}, at most {ratio['largest']:.1e} ({ratio['worst']}){flag}")
+        values = f"{ratio['median']:.1e}, at most {ratio['largest']:.1e} ({ratio['worst']})"
+        lines.append(f"    {ratio['name']:34} {values}{flag}")
     return lines
 
 

@@ -29,7 +29,8 @@ def new_runfile(path: str | os.PathLike[str], like: str = DEFAULT) -> list[Path]
     Parameters
     ----------
     path : str or path
-        The file to write. Nothing is ever overwritten; a history that already stands there unchanged is used as it is.
+        The file to write. Nothing is ever overwritten; a history that already stands there unchanged is used as it
+        is.
     like : str
         The shipped scenario to copy.
 

@@ -41,7 +41,8 @@ class Ratio:
 
 
 def driver_time_scale_h(field: Field) -> float:
-    """Shortest time over which any driver holds a value or changes by a factor e, hours; infinite in a steady field."""
+    """Shortest time over which any driver holds a value or changes by a factor e, hours; infinite in a steady
+    field."""
     scales = [np.inf]
     for driver in field.drivers:
         lengths = np.diff(driver.corners())
@@ -67,8 +68,9 @@ def ratios(field: Field, species: Species, sample: dict[str, np.ndarray]) -> lis
     Returns
     -------
     list of Ratio
-        Gyroradius over field-line curvature radius; bounce over drift period; bounce period over the drivers' time scale; drift speed over particle
-        speed (Northrop 1963, The Adiabatic Motion of Charged Particles). Cold particles, which do not gyrate, are left out.
+        Gyroradius over field-line curvature radius; bounce over drift period; bounce period over the drivers' time
+        scale; drift speed over particle speed (Northrop 1963, The Adiabatic Motion of Charged Particles). Cold
+        particles, which do not gyrate, are left out.
     """
     moving = sample["energy_keV"] > 0
     if not np.any(moving):

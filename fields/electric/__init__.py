@@ -1,0 +1,1 @@
+"""Electric field models, one file each."""

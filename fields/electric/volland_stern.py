@@ -78,7 +78,8 @@ class VollandStern(ElectricModel):
             problem = "missing" if self.kp is None else "given twice, by kp and by amplitude_kV"
             raise InputError(problem, "one of kp and amplitude_kV", key="amplitude_kV", value=self.amplitude_kV)
         if self.kp is not None and self.gamma != 2.0:
-            raise InputError("Kp sets the amplitude for gamma 2 only", "gamma = 2, or amplitude_kV", key="gamma", value=self.gamma)
+            problem = "Kp sets the amplitude for gamma 2 only"
+            raise InputError(problem, "gamma = 2, or amplitude_kV", key="gamma", value=self.gamma)
 
     def term(self, magnetic: MagneticModel) -> Term:
         """See ElectricModel."""
@@ -98,4 +99,5 @@ class VollandStern(ElectricModel):
         largest = float(np.max(self.kp.corner_values())) if isinstance(self.kp, Driver) else float(self.kp)
         if largest <= KP_TRUSTED:
             return []
-        return [f"volland-stern: Kp up to {largest:g}; the amplitude's fit peaks at Kp {KP_OF_PEAK:.2f} and falls after it"]
+        fit = f"the amplitude's fit peaks at Kp {KP_OF_PEAK:.2f} and falls after it"
+        return [f"volland-stern: Kp up to {largest:g}; {fit}"]

@@ -1,0 +1,1 @@
+"""Magnetic field models, one file each, and what they share."""

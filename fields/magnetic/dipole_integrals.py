@@ -1,11 +1,12 @@
 """The bounce integrals T and Y of a dipole, as quadratures, and the mirror point they belong to.
 
-With x the sine of magnetic latitude, x_m its value at the mirror point and x = x_m sin(theta), both integrands are smooth and even about
-both ends of 0 <= theta <= pi/2, so the midpoint rule converges exponentially. The factor that vanishes at the mirror point is
-divided out by hand: no digit is lost near 90 degrees.
+With x the sine of magnetic latitude, x_m its value at the mirror point and x = x_m sin(theta), both integrands are
+smooth and even about both ends of 0 <= theta <= pi/2, so the midpoint rule converges exponentially. The factor that
+vanishes at the mirror point is divided out by hand: no digit is lost near 90 degrees.
 
-T(y) = integral of dx sqrt(1 + 3 x^2) / sqrt(1 - B/B_m),  Y(y) = 2 * integral of dx sqrt(1 + 3 x^2) sqrt(1 - B/B_m), both from 0 to x_m:
-Hamlin et al. (1961), J. Geophys. Res. 66, 1; Schulz & Lanzerotti (1974), Particle Diffusion in the Radiation Belts.
+T(y) = integral of dx sqrt(1 + 3 x^2) / sqrt(1 - B/B_m),  Y(y) = 2 * integral of dx sqrt(1 + 3 x^2) sqrt(1 - B/B_m),
+both from 0 to x_m: Hamlin et al. (1961), J. Geophys. Res. 66, 1; Schulz & Lanzerotti (1974), Particle Diffusion in
+the Radiation Belts.
 """
 
 from __future__ import annotations
@@ -13,7 +14,6 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator
 
 import numpy as np
-
 from numpy.typing import NDArray
 
 from fields.units import Floats
@@ -29,7 +29,8 @@ DIGITS = 18.0  # exponent of the wanted quadrature error, natural units
 def mirror_latitude(cot2: Floats) -> tuple[Floats, Floats]:
     """(sin^2, cos^2) of the mirror latitude, each with full relative accuracy.
 
-    Solves ``ln(B_m/B_eq) = ln(1 + cot2)`` by Newton's method, near the equator in ``-ln(cos^2)``, far from it in ``ln(cos^2)`` itself.
+    Solves ``ln(B_m/B_eq) = ln(1 + cot2)`` by Newton's method, near the equator in ``-ln(cos^2)``, far from it in
+    ``ln(cos^2)`` itself.
 
     Parameters
     ----------
@@ -52,8 +53,8 @@ def latitude_nodes(x2m: Floats, c2m: Floats) -> tuple[Floats, Floats, Floats, Fl
     Returns
     -------
     c2, above, path, depth : ndarray, shape (n, n_node)
-        ``c2`` is cos^2 of latitude and ``above`` its excess over the mirror point's; ``path`` is sqrt(1 + 3 x^2); ``depth`` is the
-        smooth part of sqrt(1 - B/B_m), which equals ``sqrt(above) depth``.
+        ``c2`` is cos^2 of latitude and ``above`` its excess over the mirror point's; ``path`` is sqrt(1 + 3 x^2);
+        ``depth`` is the smooth part of sqrt(1 - B/B_m), which equals ``sqrt(above) depth``.
     """
     # the integrand's nearest singularity lies asinh(sqrt(c2m / x2m)) off the real axis
     width = np.arcsinh(np.sqrt(c2m.min() / max(x2m.max(), 1e-300)))

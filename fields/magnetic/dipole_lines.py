@@ -70,9 +70,8 @@ class DipoleLines:
         """B at the foot: ``B0 / f^3 sqrt(4 - 3 f / r)``."""
         radius = np.asarray(r, dtype=float)
         if np.any(radius < foot_re):
-            raise InputError(
-                "this line never reaches the foot sphere", f"r of at least {foot_re:.6g} R_E", key="r_re", value=radius.min()
-            )
+            remedy = f"r of at least {foot_re:.6g} R_E"
+            raise InputError("the line does not reach the foot sphere", remedy, key="r_re", value=float(radius.min()))
         return np.asarray(self.b0 / foot_re**3 * np.sqrt(4.0 - 3.0 * foot_re / radius) + 0.0 * np.asarray(phi))
 
     def tube_volume(self, r: ArrayLike, phi: ArrayLike, foot_re: float) -> Floats:
@@ -100,5 +99,3 @@ class DipoleLines:
             return 0.5 * (density(x, y, z) + density(x, y, -z))
 
         return average_along(flat, both).reshape(shape)
-
-

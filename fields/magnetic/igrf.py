@@ -1,8 +1,8 @@
 """The dipole part of the IGRF through time.
 
-Degree-1 Gauss coefficients of the 14th generation of the International Geomagnetic Reference Field (IAGA Working Group V-MOD;
-Alken et al. 2021, Earth Planets Space 73, 49, and its 2024 update), nT, every five years; 2030 by its secular variation. A test holds the table
-equal to the published coefficient file.
+Degree-1 Gauss coefficients of the 14th generation of the International Geomagnetic Reference Field (IAGA Working
+Group V-MOD; Alken et al. 2021, Earth Planets Space 73, 49, and its 2024 update), nT, every five years; 2030 by its
+secular variation. A test holds the table equal to the published coefficient file.
 """
 
 from __future__ import annotations

@@ -1,8 +1,8 @@
 """How the mirror field of a dipole depends on the second invariant: one polynomial, all pitch angles.
 
-At fixed second invariant, kappa = Y(y)/y = k sqrt(r) / (R_E sqrt(B0)) says everything. With z = (1 + kappa)^(-1/3) the function
-g(z) = (B_m/B_eq - 1) / (kappa (1 + kappa)) is smooth from 90 degrees (z = 1) to field-aligned (z = 0). The coefficients, in x = 2 z - 1, come
-from ``scripts/fit_mirror_ratio.py``, which fits the exact quadrature.
+At fixed second invariant, kappa = Y(y)/y = k sqrt(r) / (R_E sqrt(B0)) says everything. With z = (1 + kappa)^(-1/3)
+the function g(z) = (B_m/B_eq - 1) / (kappa (1 + kappa)) is smooth from 90 degrees (z = 1) to field-aligned (z = 0).
+The coefficients, in x = 2 z - 1, come from ``scripts/fit_mirror_ratio.py``, which fits the exact quadrature.
 """
 
 from __future__ import annotations

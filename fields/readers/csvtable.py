@@ -18,7 +18,8 @@ _KINDS = "a CSV with a header such as time,kp, a GFZ Kp text file, or a CSSI spa
 
 
 def read_csv(text: TextFile, name: str, column: str | None) -> Rows:
-    """Rows of one value column. Blank lines and ``#`` comments are skipped; a column called kp may use any Kp notation.
+    """Rows of one value column. Blank lines and ``#`` comments are skipped; a column called kp may use any Kp
+    notation.
 
     Parameters
     ----------

@@ -17,6 +17,7 @@ from scipy.integrate import DOP853
 from fields.constants import EARTH_RADIUS_M
 
 STAGES = 12
+LANES = 8  # gyrophases, followed together
 A = np.ascontiguousarray(DOP853.A[:STAGES, :STAGES])
 B = np.ascontiguousarray(DOP853.B)
 
@@ -56,19 +57,15 @@ def of_gyroradius(charge_e: int, mass_kg: float, ratio: float, r: float, b0_nT: 
 
 
 def starts(who: Orbiter, pitch_deg: float, phases: np.ndarray, r: float, b0_nT: float) -> np.ndarray:
-    """(x, v) of orbits, shape (n_phase, 6), whose guiding centres ``x + m v x B/(q B^2)`` all lie at (r, 0, 0).
+    """(x, v) of orbits, shape (n_phase, 6), whose guiding centres all lie at (r, 0, 0).
 
-    On the equator B points along z, so x lies in the equatorial plane too, at ``X - v x z / (turning B(x))``.
+    The centre is ``X = x + m v x B/(q B^2)`` with B taken at X: with B at the particle the mean distance of all phases is off by
+    3/2 rho^2 / r, and so is the rate. On the equator B points along z, so x lies in the equatorial plane too.
     """
     across, along = who.speed_re_per_s * np.sin(np.radians(pitch_deg)), who.speed_re_per_s * np.cos(np.radians(pitch_deg))
     vx, vy = across * np.cos(phases), across * np.sin(phases)
-    x, y = np.full(phases.shape, r), np.zeros(phases.shape)
-    for _ in range(200):
-        over = (x * x + y * y) ** 1.5 / (who.turning * b0_nT)
-        x, y = r - vy * over, vx * over
-    centre = guiding_centre(np.stack([x, y, 0 * x, vx, vy, along + 0 * x], axis=1), who, b0_nT)
-    assert np.max(np.abs(centre - [r, 0.0, 0.0])) < 1e-12 * r
-    return np.stack([x, y, 0.0 * x, vx, vy, along + 0.0 * x], axis=1)
+    over = r**3 / (who.turning * b0_nT)
+    return np.stack([r - vy * over, vx * over, 0.0 * vx, vx, vy, along + 0.0 * vx], axis=1)
 
 
 def dipole(x: np.ndarray, b0_nT: float) -> np.ndarray:
@@ -85,46 +82,44 @@ def guiding_centre(s: np.ndarray, who: Orbiter, b0_nT: float) -> np.ndarray:
     return s[..., :3] + np.cross(s[..., 3:], b) / (who.turning * np.sum(b * b, axis=-1, keepdims=True))
 
 
-@njit
+@njit(fastmath=True)
 def force(s: Any, turning: Any, b0: Any, out: Any) -> None:
-    x, y, z, vx, vy, vz = s
-    square = x * x + y * y + z * z
-    scale = turning * b0 / (square * np.sqrt(square))
-    along = -3.0 * z / square
-    bx, by, bz = scale * along * x, scale * along * y, scale * (1.0 + along * z)
-    out[0], out[1], out[2] = vx, vy, vz
-    out[3], out[4], out[5] = vy * bz - vz * by, vz * bx - vx * bz, vx * by - vy * bx
+    for n in range(LANES):
+        x, y, z = s[0, n], s[1, n], s[2, n]
+        vx, vy, vz = s[3, n], s[4, n], s[5, n]
+        square = x * x + y * y + z * z
+        scale = turning * b0 / (square * np.sqrt(square))
+        along = -3.0 * z / square
+        bx, by, bz = scale * along * x, scale * along * y, scale * (1.0 + along * z)
+        out[0, n], out[1, n], out[2, n] = vx, vy, vz
+        out[3, n], out[4, n], out[5, n] = vy * bz - vz * by, vz * bx - vx * bz, vx * by - vy * bx
 
 
-@njit
-def orbit(s: Any, turning: Any, b0: Any, step: Any, every: Any, path: Any, a: Any, b: Any) -> None:
-    """Write the state before the first step and after every `every` steps into `path`, shape (n, 6)."""
-    k = np.empty((12, 6))
-    trial = np.empty(6)
+@njit(fastmath=True)
+def combine(s: Any, step: Any, weights: Any, k: Any, count: Any, out: Any) -> None:
+    out[:] = s
+    for j in range(count):
+        if weights[j] != 0.0:
+            w = step * weights[j]
+            for c in range(6):
+                for n in range(LANES):
+                    out[c, n] += w * k[j, c, n]
+
+
+@njit(fastmath=True)
+def orbits(s: Any, turning: Any, b0: Any, step: Any, every: Any, path: Any, a: Any, b: Any) -> None:
+    """Write the states `s`, shape (6, LANES), now and after every `every` steps into `path`, shape (n, 6, LANES)."""
+    k = np.empty((STAGES, 6, LANES))
+    trial = np.empty((6, LANES))
     path[0] = s
     for i in range(1, path.shape[0]):
         for _ in range(every):
-            for stage in range(12):
-                for c in range(6):
-                    total = 0.0
-                    for j in range(stage):
-                        total += a[stage, j] * k[j, c]
-                    trial[c] = s[c] + step * total
+            for stage in range(STAGES):
+                combine(s, step, a[stage], k, stage, trial)
                 force(trial, turning, b0, k[stage])
-            for c in range(6):
-                total = 0.0
-                for j in range(12):
-                    total += b[j] * k[j, c]
-                s[c] += step * total
+            combine(s, step, b, k, STAGES, trial)
+            s[:] = trial
         path[i] = s
-
-
-def paths(who: Orbiter, start: np.ndarray, b0_nT: float, step_s: float, count: int, every: int) -> np.ndarray:
-    """States along the orbits, shape (n_phase, count, 6)."""
-    found = np.empty((start.shape[0], count, 6))
-    for one, path in zip(start, found):
-        orbit(one.copy(), who.turning, b0_nT, step_s, every, path, A, B)
-    return found
 
 
 def windowed_slope(time: np.ndarray, value: np.ndarray) -> np.ndarray:
@@ -135,15 +130,19 @@ def windowed_slope(time: np.ndarray, value: np.ndarray) -> np.ndarray:
 
 
 def drift_rates(
-    who: Orbiter, pitch_deg: float, phases: np.ndarray, r: float, b0_nT: float, span_s: float, per_gyration: int, every: int
+    who: Orbiter, pitch_deg: float, r: float, b0_nT: float, span_s: float, per_gyration: int, energy_error: float
 ) -> np.ndarray:
-    """Mean eastward rate of the guiding centre in rad/s for each gyrophase, from orbits over `span_s`."""
+    """Mean eastward rate of the guiding centre in rad/s over `span_s`, for LANES gyrophases; steps by the equatorial gyration."""
     gyration = 2.0 * np.pi / abs(who.turning) / (b0_nT / r**3)
-    step = gyration / per_gyration
+    step, every = gyration / per_gyration, per_gyration // 6
     count = int(np.ceil(span_s / (step * every)))
-    found = paths(who, starts(who, pitch_deg, phases, r, b0_nT), b0_nT, step, count, every)
-    speeds = np.linalg.norm(found[:, :, 3:], axis=2)
-    assert np.max(np.abs(speeds / who.speed_re_per_s - 1.0)) < 1e-9, "the integrator lost energy"
+    phases = 2.0 * np.pi * np.arange(LANES) / LANES
+    start = starts(who, pitch_deg, phases, r, b0_nT)
+    path = np.empty((count, 6, LANES))
+    orbits(np.ascontiguousarray(start.T), who.turning, b0_nT, step, every, path, A, B)
+    found = path.transpose(2, 0, 1)
+    speeds = np.linalg.norm(found[:, -1, 3:], axis=1)
+    assert np.max(np.abs(speeds / who.speed_re_per_s - 1.0)) < energy_error, "the integrator lost energy"
     centre = guiding_centre(found, who, b0_nT)
     azimuth = np.unwrap(np.arctan2(centre[..., 1], centre[..., 0]), axis=1)
     return windowed_slope(np.arange(count) * step * every, azimuth)

@@ -72,7 +72,7 @@ CASES: dict[str, Any] = {
 
 
 def late(result: Result) -> Result:
-    return dataclasses.replace(result, attrs={**result.attrs, "start": "2003-10-29T23:41:30Z", "error_99_re": 1.3e-6})
+    return dataclasses.replace(result, attrs={**result.attrs, "start": "2003-10-29T23:41:30Z", "end_error_99_re": 1.3e-6})
 
 
 @cache

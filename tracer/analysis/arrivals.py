@@ -146,7 +146,8 @@ def _unwound(mlt: Floats) -> Floats:
 
 
 def _hermite(time: Floats, value: Floats) -> tuple[Floats, Floats, Floats, Floats]:
-    """Coefficients, constant first, of the cubic in the part of the middle interval; from four points, shape (n, 4)."""
+    """Coefficients, constant first, of the cubic in the part of the middle interval; from four points, shape (n,
+    4)."""
     gap = np.diff(time, axis=1)
     slope = np.diff(value, axis=1) / gap
     middle = slope[:, 1]

@@ -47,8 +47,8 @@ def end_rates(result: Result) -> EndRates:
     low, high = run.span_h
     width = next((w for w in BIN_WIDTHS_H if run.hours / w <= MOST_BINS), run.hours / MOST_BINS)
     n = max(1, int(np.ceil(run.hours / width - 1e-9)))
-    edges: Floats = low + width * np.arange(n + 1) if not run.backward else high - width * np.arange(n, -1, -1)
+    edges = low + width * np.arange(n + 1) if not run.backward else high - width * np.arange(n, -1, -1)
     cause = np.asarray(result.end["cause"])
     time = np.clip(np.asarray(result.end["time_h"], dtype=float), edges[0], edges[-1])
     stopping = [c for c in Cause if c not in (Cause.DRIFTING, Cause.NEVER_RELEASED) and np.any(cause == c)]
-    return EndRates(edges, width, {c: np.histogram(time[cause == c], edges)[0].astype(np.int64) for c in stopping})
+    return EndRates(np.asarray(edges), width, {c: np.histogram(time[cause == c], edges)[0].astype(np.int64) for c in stopping})

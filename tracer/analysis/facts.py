@@ -10,7 +10,7 @@ import numpy as np
 from tracer.records import Result
 from tracer.store_attrs import DIGEST, digest
 
-ERROR_KEY = "error_99_re"
+ERROR_KEY = "end_error_99_re"
 
 
 @dataclass(frozen=True)

@@ -15,7 +15,7 @@ MOST_STEPS = 9
 
 
 def time_ticks(axes: Axes, run: Facts, most: int = MOST_STEPS, above: Axes | None = None) -> None:
-    """Let `axes` cover the run, in UTC, and in hours since the start along the top of `above` (of `axes` when absent)."""
+    """Let `axes` cover the run in UTC, and the top of `above` (`axes` when absent) in hours since the start."""
     step = next((s for s in STEPS_H if run.hours / s <= most), run.hours / most)
     low, high = run.span_h
     midnight = run.start.replace(hour=0, minute=0, second=0, microsecond=0)

@@ -116,7 +116,9 @@ def page() -> tuple[Figure, SubFigure]:
 
 def settle(figure: Figure) -> None:
     """Lay the figure out once and for all, on a grid: the solver's last bits differ from one time to the next."""
-    figure.draw_without_rendering()
+    engine = figure.get_layout_engine()
+    if engine is not None:
+        engine.execute(figure)
     figure.set_layout_engine("none")
     for part in figure.subfigs:
         part.bbox_relative.p0, part.bbox_relative.p1 = (

@@ -1,0 +1,1 @@
+"""All compiled code of the package."""

@@ -1,10 +1,11 @@
 """From a field to its compiled kernel, kept on disk for every later process.
 
-Numba's disk cache never finds a function that closes over another compiled function or takes one as an argument, and a function pointer
-stops vectorisation. So the chosen point functions are joined by a small generated module, ``field.py``, and the sources of
-``tracer/kernels/source`` are copied beside it: one package of plain module-level functions for each combination, which numba caches as it would
-any other. The folder's name is a hash of all that the machine code depends on - the generated text, the sources of fields/, of this folder and of a
-user's models, the versions of numba, llvmlite and numpy, the CPU - because numba's own key sees the copied files only.
+Numba's disk cache never finds a function that closes over another compiled function or takes one as an argument,
+and a function pointer stops vectorisation. So the chosen point functions are joined by a small generated module,
+``field.py``, and the sources of ``tracer/kernels/source`` are copied beside it: one package of plain module-level
+functions for each combination, which numba caches as it would any other. The folder's name is a hash of all that
+the machine code depends on - the generated text, the sources of fields/, of this folder and of a user's models, the
+versions of numba, llvmlite and numpy, the CPU - because numba's own key sees the copied files only.
 """
 
 from __future__ import annotations
@@ -110,12 +111,13 @@ def field_source(field: Field) -> tuple[str, Floats]:
         terms.append(f"    p{i}, r{i}, a{i} = electric_{i}(r, s, c{''.join(arguments)})")
     sums = (" + ".join(f"{part}{i}" for i in range(len(terms))) or "0.0 * s" for part in "pra")
     body = [
-        "from tracer.kernels.arith import compiled",
+        "from tracer.kernels.arith import inlined",
         *lines,
-        *("", "", "@compiled", "def equator(r, s, c, C):", f"    return equator_(r, s, c{magnetic_arguments})"),
-        *("", "", "@compiled", "def mirror(k, r, s, c, C):", f"    return mirror_(k, r, s, c{magnetic_arguments})"),
-        *("", "", "@compiled", "def foot(r, s, c, foot_re, C):", f"    return foot_(r, s, c, foot_re{magnetic_arguments})"),
-        *("", "", "@compiled", "def potential(r, s, c, t, C, D):", *terms, f"    return {', '.join(sums)}", ""),
+        *("", "", "@inlined", "def equator(r, s, c, C):", f"    return equator_(r, s, c{magnetic_arguments})"),
+        *("", "", "@inlined", "def mirror(k, r, s, c, C):", f"    return mirror_(k, r, s, c{magnetic_arguments})"),
+        *("", "", "@inlined", "def foot(r, s, c, foot_re, C):"),
+        f"    return foot_(r, s, c, foot_re{magnetic_arguments})",
+        *("", "", "@inlined", "def potential(r, s, c, t, C, D):", *terms, f"    return {', '.join(sums)}", ""),
     ]
     return "\n".join(body), np.array(constants)
 
@@ -189,7 +191,8 @@ def write_package(folder: Path, text: str) -> None:
     work = Path(tempfile.mkdtemp(prefix=".new-", dir=folder.parent))
     for path in sorted(SOURCE.glob("*.py")):
         shutil.copyfile(path, work / path.name)
-    (work / "field.py").write_text(f'"""Generated: the point functions of one field, joined."""\n\n{text}', encoding="utf-8")
+    header = '"""Generated: the point functions of one field, joined."""'
+    (work / "field.py").write_text(f"{header}\n\n{text}", encoding="utf-8")
     try:
         work.rename(folder)
     except OSError:

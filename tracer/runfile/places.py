@@ -1,7 +1,8 @@
 """Places in a run file: a path through its tables, and how it is written in an error line.
 
-A place reads as in TOML, with list members counted from 1: ``time.hours``, ``population[1].energy_keV.from`` for a key
-of the first ``[[population]]``, ``electric[2].gamma``, ``population[1].pitch_deg[3]`` for the third member of a list.
+A place reads as in TOML, with list members counted from 1: ``time.hours``, ``population[1].energy_keV.from`` for a
+key of the first ``[[population]]``, ``electric[2].gamma``, ``population[1].pitch_deg[3]`` for the third member of a
+list.
 """
 
 from __future__ import annotations

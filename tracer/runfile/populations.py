@@ -22,8 +22,8 @@ SAMPLES = 65  # places of a range at which the loss cone is looked at
 def populations(tables: Sequence[PopulationTable], rules: dict[str, Rule]) -> tuple[Population, ...]:
     """The populations of a run, in the order of the file.
 
-    A population without a name takes its species', numbered from the second on; without a seed, its place in the file,
-    counted from 1.
+    A population without a name takes its species', numbered from the second on; without a seed, its place in the
+    file, counted from 1.
 
     Raises
     ------

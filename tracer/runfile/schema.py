@@ -1,7 +1,7 @@
 """The tables and keys of a run file, their types and fixed bounds, in user units.
 
-Types are strict: true is no number, nor is "3"; a whole number will do where a real one is asked. What depends on more
-than one key is checked where the scenario is put together.
+Types are strict: true is no number, nor is "3"; a whole number will do where a real one is asked. What depends on
+more than one key is checked where the scenario is put together.
 """
 
 from __future__ import annotations

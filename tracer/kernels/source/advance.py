@@ -5,9 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit
 
-from tracer.kernels.arith import OPTIONS
+from tracer.kernels.arith import compiled, entry_point
 from tracer.status import Cause
 
 from .crossing import (
@@ -15,7 +14,6 @@ from .crossing import (
     INNER,
     NEVER,
     OUTER,
-    excess,
     first_crossing,
     initial_step,
     may_cross,
@@ -32,7 +30,7 @@ LEAST_STEP = 1e-13  # hours
 TWO_PI = 2.0 * np.pi
 
 
-@njit(**OPTIONS)
+@compiled
 def write_state(row: Any, r: Any, phi: Any, p: Any, C: Any) -> None:
     """r in R_E, local time in hours, energy in keV, pitch in degrees."""
     energy, cot2 = state(r, phi, p, C)
@@ -44,15 +42,17 @@ def write_state(row: Any, r: Any, phi: Any, p: Any, C: Any) -> None:
     row[3] = 90.0 - np.arctan(cot) * (180.0 / np.pi) if cot < 1.0 else np.arctan(1.0 / cot) * (180.0 / np.pi)
 
 
-@njit(**OPTIONS)
+@compiled
 def segment_at(edges: Any, t: Any, sign: Any) -> Any:
     """Index of the driver segment that is entered at `t`."""
     i = np.searchsorted(edges, t, side="right") - 1 if sign > 0 else np.searchsorted(edges, t) - 1
     return min(max(i, 0), edges.size - 2)
 
 
-@njit(**OPTIONS)
-def save(times: Any, j: Any, sign: Any, t: Any, step: Any, stop: Any, rn: Any, pn: Any, F: Any, p: Any, C: Any, rows: Any) -> Any:
+@compiled
+def save(
+    times: Any, j: Any, sign: Any, t: Any, step: Any, stop: Any, rn: Any, pn: Any, F: Any, p: Any, C: Any, rows: Any
+) -> Any:
     """Write the saved times up to `stop` from the interpolant; returns the index of the next one."""
     while j < times.size and sign * (times[j] - stop) <= 0.0:
         if times[j] == t + step:
@@ -64,12 +64,13 @@ def save(times: Any, j: Any, sign: Any, t: Any, step: Any, stop: Any, rn: Any, p
     return j
 
 
-@njit(**OPTIONS)
+@compiled
 def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, F: Any, end: Any, rows: Any) -> None:
     """Integrate one particle.
 
-    `P` is (r, phi, release, mu, k, 1/q, 2/(m c^2)); `rules` is (end of run, +-1, outer, inner, foot radius, cone mode, tolerance); `end` takes
-    (time, r, mlt, energy, pitch, cause, turns, first time in the cone, accepted steps, rejected steps).
+    `P` is (r, phi, release, mu, k, 1/q, 2/(m c^2)); `rules` is (end of run, +-1, outer, inner, foot radius, cone
+    mode, tolerance); `end` takes (time, r, mlt, energy, pitch, cause, turns, first time in the cone, accepted
+    steps, rejected steps).
     """
     t_end, sign, outer, inner, foot_re, cone, tolerance = rules
     r, phi, t = P[0], P[1], P[2]
@@ -166,7 +167,7 @@ def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, F:
     end[8], end[9] = accepted, rejected
 
 
-@njit(nogil=True, cache=True, **OPTIONS)
+@entry_point
 def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any) -> None:
     """Integrate the particles `P`, shape (n, 7), into `end`, shape (n, 10), and `track`, shape (n, n_time, 4)."""
     F = np.empty(16)

@@ -5,9 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit
 
-from tracer.kernels.arith import OPTIONS
+from tracer.kernels.arith import compiled
 from tracer.status import Cause
 
 from .drift import depth_in_cone, slope
@@ -22,7 +21,7 @@ POLISHINGS = 3
 NEVER = 2.0  # a fraction beyond the end of the step
 
 
-@njit(**OPTIONS)
+@compiled
 def excess(which: Any, r: Any, phi: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """How far the point lies beyond a limit; positive beyond."""
     if which == OUTER:
@@ -32,13 +31,13 @@ def excess(which: Any, r: Any, phi: Any, outer: Any, inner: Any, foot_re: Any, p
     return depth_in_cone(r, phi, p, foot_re, C)
 
 
-@njit(**OPTIONS)
+@compiled
 def excess_along(which: Any, F: Any, x: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """`excess` at fraction `x` of the step."""
     return excess(which, along(F, 0, x), along(F, 8, x), outer, inner, foot_re, p, C)
 
 
-@njit(**OPTIONS)
+@compiled
 def highest(which: Any, F: Any, a: Any, b: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """Fraction between `a` and `b` where the excess is largest: a touch between two samples must not slip through."""
     for _ in range(SHRINKS):
@@ -52,7 +51,7 @@ def highest(which: Any, F: Any, a: Any, b: Any, outer: Any, inner: Any, foot_re:
     return 0.5 * (a + b)
 
 
-@njit(**OPTIONS)
+@compiled
 def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """Smallest fraction of the step at which the excess turns from negative to positive; NEVER if it does not."""
     a, ga = 0.0, excess_along(which, F, 0.0, outer, inner, foot_re, p, C)
@@ -81,12 +80,13 @@ def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: 
     return NEVER
 
 
-@njit(**OPTIONS)
+@compiled
 def polished(
     which: Any, x: Any, t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any,
     outer: Any, inner: Any, foot_re: Any, p: Any, C: Any, D: Any,
 ) -> Any:  # fmt: skip
-    """Step length, r and phi at the crossing near fraction `x`, by Newton on true steps: as accurate as the path itself."""
+    """Step length, r and phi at the crossing near fraction `x`, by Newton on true steps: as accurate as the path
+    itself."""
     step = x * h
     for _ in range(POLISHINGS):
         re, pe, _, _ = trial(t, r, phi, step, k1, l1, p, C, D)
@@ -102,16 +102,15 @@ def polished(
     return step, re, pe
 
 
-@njit(**OPTIONS)
-def may_cross(
-    r: Any, rn: Any, step: Any, k1: Any, kn: Any, outer: Any, inner: Any
-) -> Any:
-    """Whether the path may have left the domain: half the step at the larger speed bounds what it strays from its ends."""
+@compiled
+def may_cross(r: Any, rn: Any, step: Any, k1: Any, kn: Any, outer: Any, inner: Any) -> Any:
+    """Whether the path may have left the domain: half the step at the larger speed bounds what it strays from its
+    ends."""
     stray = 0.5 * abs(step) * max(abs(k1), abs(kn))
     return max(r, rn) + stray >= outer or min(r, rn) - stray <= inner
 
 
-@njit(**OPTIONS)
+@compiled
 def may_enter_cone(
     g: Any, gn: Any, r: Any, rn: Any, phi: Any, pn: Any, step: Any,
     k1: Any, l1: Any, kn: Any, ln: Any, foot_re: Any, p: Any, C: Any,
@@ -124,7 +123,7 @@ def may_enter_cone(
     return not top + 0.5 * (top - min(g, gn, gm)) < 0.0
 
 
-@njit(**OPTIONS)
+@compiled
 def initial_step(k1: Any, l1: Any, tolerance: Any) -> Any:
     """A first guess in hours: a hundredth of the time scale of the motion, smaller for a finer tolerance."""
     pace = abs(k1) + abs(l1) + 1e-12

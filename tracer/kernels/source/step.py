@@ -5,9 +5,8 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit
 
-from tracer.kernels.arith import OPTIONS
+from tracer.kernels.arith import compiled
 
 from . import tableau as tb
 from .drift import slope
@@ -17,11 +16,12 @@ TINY = 1e-300  # keeps 0/0 away where the field is uniform along the step
 # fmt: off
 
 
-@njit(**OPTIONS)
+@compiled
 def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D: Any) -> Any:
     """Try a step of `h` hours.
 
-    `k` are slopes of r, `l` those of phi; `p` the particle, `C` constants of the field, `D` its drivers in this segment.
+    `k` are slopes of r, `l` those of phi; `p` the particle, `C` constants of the field, `D` its drivers in this
+    segment.
 
     Returns
     -------
@@ -108,12 +108,13 @@ def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D:
     return rn, pn, error, (k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12)
 
 
-@njit(**OPTIONS)
+@compiled
 def interpolant(
     t: Any, r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, k13: Any, l13: Any, stages: Any,
     p: Any, C: Any, D: Any, F: Any,
 ) -> None:
-    """Write the interpolant's coefficients over an accepted step into `F`, shape (16,): eight for r, eight for phi."""
+    """Write the interpolant's coefficients over an accepted step into `F`, shape (16,): eight for r, eight for
+    phi."""
     k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
     k14, l14 = slope(
         t + tb.C14 * h, r + h * (tb.A14_1 * k1 + tb.A14_7 * k7 + tb.A14_8 * k8 + tb.A14_9 * k9 + tb.A14_10 * k10 +
@@ -175,11 +176,10 @@ def interpolant(
     F[7], F[15] = f7r, f7p
 
 
-@njit(**OPTIONS)
+@compiled
 def along(F: Any, o: Any, x: Any) -> Any:
     """The interpolant at fraction `x` of the step; `o` is 0 for r, 8 for phi."""
     y = 1.0 - x
     return F[o] + x * (
         F[o + 1] + y * (F[o + 2] + x * (F[o + 3] + y * (F[o + 4] + x * (F[o + 5] + y * (F[o + 6] + x * F[o + 7])))))
     )
-

@@ -1,8 +1,9 @@
 """The Dormand-Prince method of order 8 with its error estimates of order 5 and 3 and its interpolant of order 7.
 
-Hairer, Norsett & Wanner (1993), Solving Ordinary Differential Equations I, 2nd ed., section II.5 (code DOP853). Names: ``A5_3`` weighs stage 3 in
-stage 5; ``C5`` is the node of stage 5; ``B*`` the weights of the solution; ``E5_*`` and ``E3_*`` those of the two error estimates; ``D4_6`` weighs stage 6
-in coefficient 4 of the interpolant. Stages count from 1; 13 is the slope at the end of the step, 14 to 16 serve the interpolant only. A test holds all
+Hairer, Norsett & Wanner (1993), Solving Ordinary Differential Equations I, 2nd ed., section II.5 (code DOP853).
+Names: ``A5_3`` weighs stage 3 in stage 5; ``C5`` is the node of stage 5; ``B*`` the weights of the solution;
+``E5_*`` and ``E3_*`` those of the two error estimates; ``D4_6`` weighs stage 6 in coefficient 4 of the interpolant.
+Stages count from 1; 13 is the slope at the end of the step, 14 to 16 serve the interpolant only. A test holds all
 equal to those of scipy's DOP853.
 """
 
