@@ -10,6 +10,7 @@ import numpy as np
 
 from tracer.records import GROUPS, Chunk, Result
 from tracer.scenario import Scenario
+from tracer.store_writer import stored
 
 
 class Collector:
@@ -20,8 +21,9 @@ class Collector:
         self._attrs = dict(attrs)
         count, times = scenario.count, scenario.save_times_h.size
         shapes = {"particle": (count,), "track": (count, times), "end": (count,)}
+        width = {"track": "f4"} if scenario.output.tracks == "single" else {}
         self._columns = {
-            group: {c.name: np.empty(shapes[group], np.dtype(c.dtype)) for c in columns}
+            group: {c.name: np.empty(shapes[group], width.get(group, c.dtype)) for c in columns}
             for group, columns in GROUPS.items()
             if group != "track" or times
         }
@@ -39,7 +41,7 @@ class Collector:
         rows = slice(chunk.first, chunk.first + chunk.end["cause"].size)
         for group, columns in self._columns.items():
             for name, column in columns.items():
-                column[rows] = getattr(chunk, group)[name]
+                column[rows] = stored(getattr(chunk, group)[name], name, column.dtype)
 
     def finish(self, extra_attrs: Mapping[str, Any]) -> None:
         """Add what is known at the end only."""

@@ -10,7 +10,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fields.units import Floats, cot2_of_pitch, k_to_re_sqrtG, mu_to_MeV_per_G, phi_from_mlt, rest_energy_keV
-from tracer.invariants import momentum_term
+from tracer.adiabatic import momentum_term
 from tracer.kernels.build import Kernel, kernel_for
 from tracer.population import initial_state
 from tracer.records import END, PARTICLE, TRACK, Chunk

@@ -5,8 +5,9 @@ from __future__ import annotations
 import os
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import Generator, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
+from contextlib import closing
 from pathlib import Path
 from typing import Any
 
@@ -60,7 +61,15 @@ def trace(
     Stopped
         On Ctrl-C; nothing is left behind.
     """
-    watch = watcher or Silent()
+    try:
+        return _trace(scenario, out, overwrite, threads or processors(), watcher or Silent())
+    except (KeyboardInterrupt, Interrupted):
+        raise Stopped("stopped before the end; nothing was kept") from None
+
+
+def _trace(
+    scenario: Scenario, out: str | os.PathLike[str] | None, overwrite: bool, threads: int, watch: Watcher
+) -> Result:
     began = time.perf_counter()
     if out is not None:
         store.check_output(out, scenario, overwrite)
@@ -72,9 +81,10 @@ def trace(
     work = {"accepted": 0.0, "rejected": 0.0}
     moving = time.perf_counter()
     with _sink(scenario, out, extra, overwrite) as sink:
-        for chunk in chunks(scenario, kernel, pilot.local_tolerance, threads or processors(), watch):
-            sink.write(chunk)
-            work = {name: work[name] + chunk.work[name] for name in work}
+        with closing(chunks(scenario, kernel, pilot.local_tolerance, threads, watch)) as coming:
+            for chunk in coming:
+                sink.write(chunk)
+                work = {name: work[name] + chunk.work[name] for name in work}
         traced_s = time.perf_counter() - moving
         errors = audit(scenario, kernel, pilot.local_tolerance)
         measured = {
@@ -96,16 +106,12 @@ def processors() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
-def chunks(scenario: Scenario, kernel: Kernel, tolerance: float, threads: int, watch: Watcher) -> Iterator[Chunk]:
+def chunks(scenario: Scenario, kernel: Kernel, tolerance: float, threads: int, watch: Watcher) -> Generator[Chunk]:
     """All chunks in order of completion; never more in memory than there are threads and one.
 
-    Raises
-    ------
-    Stopped
-        When Ctrl-C came; the threads have ended by then.
+    Whatever ends it early, closing included, the threads have ended by then too.
     """
     halt = threading.Event()
-    starts = iter(range(0, scenario.count, chunk_size(scenario.count, threads)))
     size = chunk_size(scenario.count, threads)
     watch.tracing(scenario.count)
 
@@ -117,18 +123,14 @@ def chunks(scenario: Scenario, kernel: Kernel, tolerance: float, threads: int, w
     with ThreadPoolExecutor(threads) as pool:
         running: set[Future[Chunk]] = set()
         try:
-            for first in starts:
+            for first in range(0, scenario.count, size):
                 running.add(pool.submit(one, first))
                 if len(running) > threads:
                     yield from _finished(running)
             while running:
                 yield from _finished(running)
-        except (KeyboardInterrupt, Interrupted):
-            halt.set()
-            wait(running)
-            raise Stopped("stopped before the end; nothing was kept") from None
         finally:
-            halt.set()
+            halt.set()  # those still at work, if any, stop at their next batch; leaving the pool waits for them
 
 
 def chunk_size(count: int, threads: int) -> int:

@@ -9,8 +9,8 @@ import numpy as np
 
 from fields.compose import Field
 from tracer.accuracy import PILOT_SEED, run_pilot, sample
+from tracer.adiabatic import periods
 from tracer.integrate import advance, compile_kernel, prepare
-from tracer.invariants import periods
 from tracer.pipeline import CHUNK, chunk_size, processors
 from tracer.population import initial_state
 from tracer.scenario import Population, Scenario, Species

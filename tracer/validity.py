@@ -12,7 +12,7 @@ import numpy as np
 from fields.compose import Field
 from fields.constants import EARTH_RADIUS_M, ELEMENTARY_CHARGE_C, SPEED_OF_LIGHT_M_S
 from fields.units import RAD_PER_MLT_HOUR, Floats, phi_from_mlt, rest_energy_keV
-from tracer.invariants import drift_rate, periods
+from tracer.adiabatic import drift_rate, periods
 from tracer.scenario import Species
 
 LIMIT = 0.1  # common practice: a ratio above it deserves a second thought

@@ -218,10 +218,10 @@ def test_sentences_say_who_came_and_who_left() -> None:
     end["cause"] = np.array([0, 0, 1], dtype="u1")
     lines = sentences(dataclasses.replace(result, end=end))
     assert lines == [
-        "2 of 3 protons (66.7 %) reached 4 R_E: the first at 4.00 h (2027-03-04 04:00 UTC), half of them by 4.50 h.",
-        "2 of 3 (66.7 %): still drifting at the end of the run.",
-        "1 of 3 (33.3 %): reached the outer boundary moving outward, 10 R_E, "
+        "protons: 2 of 3 (66.7 %) reached 4 R_E, the first at 4.00 h (2027-03-04 04:00 UTC), half of them by 4.50 h.",
+        "2 of 3 (66.7 %) were still drifting at the end of the run.",
+        "1 of 3 (33.3 %) reached the outer boundary moving outward (10 R_E), "
         "the first at 10.00 h (2027-03-04 10:00 UTC).",
     ]
-    assert sentences(spiral(np.array([6.0, 6.5]), 0.1))[0] == "None of 2 protons reached 4 R_E."
+    assert sentences(spiral(np.array([6.0, 6.5]), 0.1))[0] == "protons: none of 2 reached 4 R_E."
     assert "back in time at 4.00 h (2027-03-03 20:00 UTC)" in sentences(spiral(np.array([6.0]), 0.5, backward=True))[0]

@@ -15,6 +15,7 @@ import matplotlib
 import numpy as np
 import pytest
 import synthetic
+from matplotlib.collections import LineCollection
 from matplotlib.figure import Figure
 from matplotlib.text import Text
 
@@ -22,7 +23,7 @@ from fields.errors import InputError
 from tracer.analysis.facts import facts
 from tracer.figures import draw, fitting
 from tracer.figures.clock import time_ticks
-from tracer.figures.style import END_MARKS, ENERGY_MAP, PITCH_MAP, SETTINGS
+from tracer.figures.style import COLD, END_MARKS, ENERGY_MAP, PITCH_MAP, SETTINGS
 from tracer.records import Result
 from tracer.status import Cause
 from tracer.stopping import Stopped
@@ -72,7 +73,9 @@ CASES: dict[str, Any] = {
 
 
 def late(result: Result) -> Result:
-    return dataclasses.replace(result, attrs={**result.attrs, "start": "2003-10-29T23:41:30Z", "end_error_99_re": 1.3e-6})
+    return dataclasses.replace(
+        result, attrs={**result.attrs, "start": "2003-10-29T23:41:30Z", "end_error_99_re": 1.3e-6}
+    )
 
 
 @cache
@@ -210,6 +213,27 @@ def test_the_curve_is_the_driver(hold: str, driver: Any) -> None:
     assert jumps == (7 if hold == "step" else 0)
 
 
+def test_cold_plasma_is_drawn_without_an_energy_scale() -> None:
+    figures = figures_of("cold")
+    assert "arrivals" not in figures
+    (axes,) = figures["paths"].axes  # no colour bar
+    (lines,) = axes.findobj(LineCollection)
+    assert np.allclose(lines.get_colors()[:, :3], matplotlib.colors.to_rgb(COLD))
+    assert "zero energy" in joined(words_in("cold", "paths"))
+
+
+def test_warm_paths_take_their_colours_from_the_scale() -> None:
+    figure = figures_of("one population")["paths"]
+    lines = max(figure.axes[0].findobj(LineCollection), key=lambda found: len(found.get_segments()))
+    (scale,) = {figure.axes[1]._colorbar.norm}
+    energies = result_of("one population").track["energy_keV"]
+    assert scale.vmin <= np.nanmin(energies) * 1.001
+    assert scale.vmax >= np.nanmax(energies) * 0.999
+    known = ENERGY_MAP(np.linspace(0, 1, 256))[:, :3]
+    gap = np.abs(np.asarray(lines.get_colors())[::97, None, :3] - known).sum(axis=2).min(axis=1)
+    assert gap.max() < 0.02
+
+
 def lightness(colour: Any) -> np.ndarray:
     """CIE L* of sRGB colours (IEC 61966-2-1 and CIE 15, formulas from memory)."""
     rgb = np.atleast_2d(matplotlib.colors.to_rgba_array(colour))[:, :3]
@@ -281,6 +305,8 @@ def test_bad_requests_are_one_clear_line(tmp_path: Path) -> None:
         with pytest.raises(InputError) as caught:
             draw(result, tmp_path / "new", **asked)
         assert str(caught.value) == line
+    with pytest.raises(InputError, match=r"nowhere\.h5: no such file"):
+        draw(tmp_path / "nowhere.h5", tmp_path)
     (tmp_path / "file").write_text("")
     with pytest.raises(InputError, match="cannot be written"):
         draw(result, tmp_path / "file")

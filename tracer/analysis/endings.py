@@ -51,4 +51,6 @@ def end_rates(result: Result) -> EndRates:
     cause = np.asarray(result.end["cause"])
     time = np.clip(np.asarray(result.end["time_h"], dtype=float), edges[0], edges[-1])
     stopping = [c for c in Cause if c not in (Cause.DRIFTING, Cause.NEVER_RELEASED) and np.any(cause == c)]
-    return EndRates(np.asarray(edges), width, {c: np.histogram(time[cause == c], edges)[0].astype(np.int64) for c in stopping})
+    return EndRates(
+        np.asarray(edges), width, {c: np.histogram(time[cause == c], edges)[0].astype(np.int64) for c in stopping}
+    )

@@ -10,6 +10,8 @@ from tracer.analysis.facts import Facts, facts
 from tracer.records import Result
 from tracer.status import Cause
 
+STATES = (Cause.DRIFTING, Cause.FAILED, Cause.NEVER_RELEASED)  # their sentences have no verb of their own
+
 
 def sentences(result: Result, r_re: float = 4.0) -> list[str]:
     """The findings of a run: who reached `r_re` and when, who left through which boundary and when, who still drifts.
@@ -43,19 +45,19 @@ def _reaching(result: Result, run: Facts, r_re: float) -> list[str]:
         if released == 0:
             continue
         if times.size == 0:
-            lines.append(f"None of {released} {name} reached {r_re:g} R_E.")
+            lines.append(f"{name}: none of {released} reached {r_re:g} R_E.")
             continue
         when = f"the first {_moment(run, times.min())}"
         if times.size > 1:
             when += f", half of them by {np.median(times):.2f} h"
         share = _share(times.size, released)
-        lines.append(f"{times.size} of {released} {name} ({share}) reached {r_re:g} R_E: {when}.")
+        lines.append(f"{name}: {times.size} of {released} ({share}) reached {r_re:g} R_E, {when}.")
     return lines
 
 
 def _ending(result: Result, run: Facts, cause: Cause, count: int) -> str:
     """How many ended by `cause`, and when."""
-    line = f"{count} of {result.count} ({_share(count, result.count)}): {_words(cause, run)}"
+    line = f"{count} of {result.count} ({_share(count, result.count)}) {_words(cause, run)}"
     if cause in (Cause.DRIFTING, Cause.NEVER_RELEASED):
         return line + "."
     times = np.asarray(result.end["time_h"], dtype=float)[np.asarray(result.end["cause"]) == cause] * run.direction
@@ -65,10 +67,10 @@ def _ending(result: Result, run: Facts, cause: Cause, count: int) -> str:
 
 def _words(cause: Cause, run: Facts) -> str:
     if cause is Cause.OUTER:
-        return f"{cause.sentence}, {run.outer_re:g} R_E"
+        return f"{cause.sentence} ({run.outer_re:g} R_E)"
     if cause is Cause.INNER:
-        return f"{cause.sentence}, {run.inner_re:g} R_E"
-    return cause.sentence
+        return f"{cause.sentence} ({run.inner_re:g} R_E)"
+    return f"were {cause.sentence}" if cause in STATES else cause.sentence
 
 
 def _moment(run: Facts, elapsed_h: float) -> str:

@@ -14,7 +14,8 @@ SAMPLE = 1000
 GRID_RE = 0.5
 SECTOR_H = 3.0
 SECTOR_STEP_H = 1.0
-LOCAL_SHARE = 0.02  # of all particles; a sector where more of them start is theirs
+CLEARANCE_H = 3.0
+LOCAL_SHARE = 0.02  # of all particles; a sector near which more of them start is passed over
 
 
 def watched_radius(result: Result) -> float | None:
@@ -40,13 +41,14 @@ def watched_radius(result: Result) -> float | None:
 def busiest_sector(result: Result, found: Crossings) -> tuple[float, float]:
     """The three hours of local time, from a full hour, in which most particles first arrive.
 
-    Sectors where particles start are passed over, for arrivals there say little of the drift; unless no other sees
+    Sectors near which particles start are passed over, for arrivals there say little of the drift; unless no other sees
     any.
     """
     begins: Floats = np.arange(0.0, 24.0, SECTOR_STEP_H)
     sectors = [(float(begin), float((begin + SECTOR_H) % 24.0)) for begin in begins]
     counts = np.array([found.within(sector).first().count for sector in sectors])
     release = np.asarray(result.particle["mlt_h"], dtype=float)
-    starts = np.array([np.count_nonzero((release - begin) % 24.0 < SECTOR_H) for begin in begins])
+    near = SECTOR_H + 2.0 * CLEARANCE_H
+    starts = np.array([np.count_nonzero((release - begin + CLEARANCE_H) % 24.0 < near) for begin in begins])
     away = np.where(starts <= LOCAL_SHARE * release.size, counts, 0)
     return sectors[int(np.argmax(away if away.any() else counts))]

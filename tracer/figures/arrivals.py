@@ -22,9 +22,10 @@ def draw_arrivals(
 ) -> list[Figure]:
     """First arrivals at r = `r_re` within the sector; a place is chosen where none is given.
 
-    None without tracks, or when no place was asked for and no circle is crossed.
+    None without tracks; or, when no place was asked for, if no circle is crossed or all is cold plasma.
     """
-    if result.time_h.size == 0:
+    chosen = r_re is None and sector_h is None
+    if result.time_h.size == 0 or (chosen and not np.any(np.asarray(result.particle["energy_keV"]) > 0)):
         return []
     radius = r_re if r_re is not None else watched_radius(result)
     if radius is None:
@@ -39,9 +40,10 @@ def _figure(result: Result, arrived: Crossings, every: Crossings, sector: tuple[
     run = facts(result)
     figure, body = page()
     axes = body.subplots()
-    shown = arrived.where(np.arange(arrived.count)[:: max(1, -(-arrived.count // SHOWN))])
+    warm = arrived.where(arrived.energy_keV > 0)
+    shown = warm.where(np.linspace(0, warm.count - 1, min(warm.count, SHOWN)).round().astype(np.int64))
     if shown.count:
-        _points(body, axes, result, shown)
+        _points(body, axes, result, warm, shown)
     else:
         axes.set_ylim(0.1, 1000.0)
         axes.text(0.5, 0.5, "no particle arrived here", transform=axes.transAxes, ha="center", color=INK)
@@ -56,6 +58,8 @@ def _figure(result: Result, arrived: Crossings, every: Crossings, sector: tuple[
     detail += f", {shown.count} shown." if shown.count < arrived.count else "."
     if chosen:
         detail += " The sector was chosen for its many arrivals."
+    if warm.count < arrived.count:
+        detail += f" {arrived.count - warm.count} have no energy and so no place here."
     unknown = np.unique(every.particle[~every.mlt_known]).size
     if unknown:
         detail += f" Left out: {unknown} that go round too fast for the saved interval: their local time is not known."
@@ -63,22 +67,20 @@ def _figure(result: Result, arrived: Crossings, every: Crossings, sector: tuple[
     return figure
 
 
-def _points(body: SubFigure, axes: Axes, result: Result, shown: Crossings) -> None:
-    population = np.asarray(result.particle["population"])[shown.particle]
-    positive = shown.energy_keV[shown.energy_keV > 0]
-    floor = float(positive.min()) if positive.size else 1e-6
+def _points(body: SubFigure, axes: Axes, result: Result, warm: Crossings, shown: Crossings) -> None:
+    population = np.asarray(result.particle["population"])
+    size = 14.0 if shown.count < 1500 else 8.0
     scale = Normalize(0.0, 90.0)
     entries = []
-    for code in np.unique(population):
-        here = population == code
+    for code in np.unique(population[shown.particle]):
+        here = population[shown.particle] == code
         marker = POPULATION_MARKERS[int(code) % len(POPULATION_MARKERS)]
-        # Cold particles have no place on a logarithmic axis: they stand at its foot.
-        energy = np.maximum(shown.energy_keV[here], floor)
         points = axes.scatter(
-            shown.time_h[here], energy, c=shown.pitch_deg[here], cmap=PITCH_MAP, norm=scale,
-            s=14, marker=marker, linewidths=0.2, edgecolors="white",
+            shown.time_h[here], shown.energy_keV[here], c=shown.pitch_deg[here], cmap=PITCH_MAP, norm=scale,
+            s=size, marker=marker, linewidths=0.2, edgecolors="white",
         )  # fmt: skip
-        words = f"{shortened(result.population_names[int(code)], 40)} ({np.count_nonzero(here)})"
+        count = np.count_nonzero(population[warm.particle] == code)
+        words = f"{shortened(result.population_names[int(code)], 40)} ({count})"
         entries.append(entry(words, marker=marker, color=INK, markersize=5))
     bar = body.colorbar(points, ax=axes, fraction=0.04, pad=0.02)
     bar.set_label("equatorial pitch angle at arrival (deg)")

@@ -46,7 +46,7 @@ def _map(axes: Axes, result: Result) -> None:
         mark = END_MARKS[each]
         back = each is Cause.DRIFTING
         axes.scatter(
-            x, y, s=9 if back else 20, marker=mark.marker, color=mark.colour, edgecolors=rim(each),
+            x, y, s=9 if back else 20, marker=mark.marker, color=mark.colour, edgecolors=rim(each) if back else "none",
             linewidths=0.3, zorder=3.2 if back else 4,
         )  # fmt: skip
 

@@ -9,14 +9,16 @@ from matplotlib.axes import Axes
 from matplotlib.cm import ScalarMappable
 from matplotlib.collections import LineCollection
 from matplotlib.colors import LogNorm
-from matplotlib.figure import Figure, SubFigure
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
 from numpy.typing import NDArray
 
 from fields.units import Floats
-from tracer.analysis.facts import Facts, facts
-from tracer.analysis.polylines import Polylines, evenly_over_energy, polylines
+from tracer.analysis.facts import facts
+from tracer.analysis.polylines import Polylines, evenly_over_energy, polylines, shorter_way
 from tracer.figures.dial import VIEW, boundary, draw_dial, place
 from tracer.figures.style import (
+    COLD,
     END_MARKS,
     ENERGY_MAP,
     INK,
@@ -57,23 +59,28 @@ def _page(result: Result, present: list[tuple[str, NDArray[np.int64]]]) -> Figur
     panels = body.subplots(1, len(present), squeeze=False).ravel()
     quota = max(1, SHOWN // len(present))
     drawn = [polylines(result, evenly_over_energy(result, rows, quota)) for _, rows in present]
-    scale = log_scale(np.concatenate([paths.energy_keV.ravel() for paths in drawn]))
+    energies = np.concatenate([paths.energy_keV.ravel() for paths in drawn])
+    scale, warm, cold = log_scale(energies), bool(np.any(energies > 0)), bool(np.any(energies == 0))
     causes: set[Cause] = set()
     for axes, (name, rows), paths in zip(panels, present, drawn):
         draw_dial(axes, run)
         _draw_lines(axes, paths, scale)
         causes |= _draw_ends(axes, result, paths.index)
         axes.set_title(f"{shortened(name, 30)} ({_species(result, rows)}): {paths.index.size} of {rows.size} shown")
-    tall = 1.0 if len(present) == 1 else 0.75
-    bar = body.colorbar(ScalarMappable(scale, ENERGY_MAP), ax=list(panels), fraction=0.04, pad=0.02, shrink=tall)
-    bar.set_label("energy (keV)")
-    plain_log_axis(bar.ax, "y")
+    if warm:
+        tall = 1.0 if len(present) == 1 else 0.75
+        bar = body.colorbar(ScalarMappable(scale, ENERGY_MAP), ax=list(panels), fraction=0.04, pad=0.02, shrink=tall)
+        bar.set_label("energy (keV)")
+        plain_log_axis(bar.ax, "y")
     loose = sum(int(np.count_nonzero(~paths.followed())) for paths in drawn)
-    _legend(body, run, causes, loose > 0, side=len(present) == 1)
+    lines = [boundary(run)] + ([Line2D([], [], color=COLD, label="zero energy")] if cold else [])
+    if loose:
+        lines.append(entry("saved too seldom to join", marker=".", color=INK, markersize=3))
+    key(body, [*_end_entries(causes), *lines], side=len(present) == 1)
     detail = f"Equatorial crossing points of the drift paths, {VIEW}. Paths chosen evenly over initial energy."
     if loose:
         detail += f" {loose} go round too fast for the saved interval: dots."
-    frame(figure, run, "Drift paths, coloured by energy", detail)
+    frame(figure, run, "Drift paths, coloured by energy" if warm else "Drift paths of cold plasma", detail)
     return figure
 
 
@@ -92,19 +99,21 @@ def _draw_lines(axes: Axes, paths: Polylines, scale: LogNorm) -> None:
         r, mlt, energy = _smooth(paths, i)
         if r.size < 2:
             continue
-        shade = np.minimum((np.asarray(scale(energy[:-1])) * SHADES).astype(int), SHADES - 1)
+        shade = np.minimum((scale(energy[:-1]) * SHADES).filled(-1).astype(int), SHADES - 1)
         cuts = np.flatnonzero(np.diff(shade)) + 1
         points = np.column_stack(place(r, mlt))
         for begin, end in zip(np.append(0, cuts), np.append(cuts, shade.size)):
             pieces.append(points[begin : end + 1])
             shades.append(int(shade[begin]))
-    colours = ENERGY_MAP((np.asarray(shades) + 0.5) / SHADES)
+    colours = ENERGY_MAP(np.ma.masked_less(np.asarray(shades, dtype=float), 0.0) / (SHADES - 1))
     axes.add_collection(
         LineCollection(pieces, colors=colours, linewidths=0.8, alpha=0.9, capstyle="round", zorder=2), autolim=False
     )
     dots = np.isfinite(paths.r_re) & ~joined[:, None]
     x, y = place(paths.r_re[dots], paths.mlt_h[dots])
-    axes.scatter(x, y, s=2.0, c=paths.energy_keV[dots], cmap=ENERGY_MAP, norm=scale, linewidths=0, zorder=2)
+    axes.scatter(
+        x, y, s=2.0, c=paths.energy_keV[dots], cmap=ENERGY_MAP, norm=scale, plotnonfinite=True, linewidths=0, zorder=2
+    )
 
 
 def _smooth(paths: Polylines, row: int) -> tuple[Floats, Floats, Floats]:
@@ -113,7 +122,7 @@ def _smooth(paths: Polylines, row: int) -> tuple[Floats, Floats, Floats]:
     r, mlt, energy = paths.r_re[row, there], paths.mlt_h[row, there], paths.energy_keV[row, there]
     if r.size < 2:
         return r, mlt, energy
-    step = (np.diff(mlt) + 12.0) % 24.0 - 12.0
+    step = shorter_way(np.diff(mlt))
     total = mlt[0] + np.append(0.0, np.cumsum(step))
     parts = np.maximum(1, np.ceil(np.abs(step) / ARC_H)).astype(int)
     knots = np.append(0, np.cumsum(parts))
@@ -135,12 +144,10 @@ def _draw_ends(axes: Axes, result: Result, index: NDArray[np.int64]) -> set[Caus
     return found
 
 
-def _legend(body: SubFigure, run: Facts, causes: set[Cause], loose: bool, side: bool) -> None:
+def _end_entries(causes: set[Cause]) -> list[Line2D]:
     entries = [entry("start", marker="o", markerfacecolor="white", markeredgecolor=INK, markersize=4.5)]
     for cause in sorted(causes):
         mark = END_MARKS[cause]
-        entries.append(entry(f"end: {cause.sentence}", marker=mark.marker, color=mark.colour, markersize=6))
-    entries.append(boundary(run))
-    if loose:
-        entries.append(entry("saved too seldom to join", marker=".", color=INK, markersize=3))
-    key(body, entries, side=side)
+        look: dict[str, Any] = {"marker": mark.marker, "color": mark.colour, "markeredgecolor": rim(cause)}
+        entries.append(entry(f"end: {cause.sentence}", markersize=6, **look))
+    return entries

@@ -58,6 +58,7 @@ SETTINGS: Any = {
 
 INK = "0.15"
 FAINT = "0.45"
+COLD = "0.5"
 
 
 @dataclass(frozen=True)
@@ -91,8 +92,9 @@ POPULATION_MARKERS = ("o", "^", "s", "D", "v", "P", "X", "*")
 
 
 def _clipped(name: str, low: float, high: float) -> Colormap:
-    """The part of a map that shows on white."""
-    return ListedColormap(colormaps[name](np.linspace(low, high, 256)), name=f"{name} {low:g}-{high:g}")
+    """The part of a map that shows on white; what has no place on a logarithmic scale is grey."""
+    colours = ListedColormap(colormaps[name](np.linspace(low, high, 256)), name=f"{name} {low:g}-{high:g}")
+    return colours.with_extremes(bad=COLD)
 
 
 # Perceptually uniform, their lightness rising all the way: safe for colour-blind eyes, and readable in grey.
@@ -147,6 +149,8 @@ def entry(words: str, **look: Any) -> Line2D:
 def frame(figure: Figure, run: Facts, heading: str, detail: str) -> None:
     """Write the headline above and the footer below."""
     left = 0.02
+    if run.backward:
+        heading += " (traced backward)"
     figure.text(left, 0.965, shortened(heading, TITLE_LENGTH), fontsize=13, weight="bold", color=INK, va="center")
     lines = textwrap.wrap(detail, 140)[:2]
     figure.text(left, 0.943, "\n".join(lines), fontsize=9.5, color=INK, va="top", linespacing=1.3)
@@ -187,4 +191,4 @@ def log_scale(values: Floats) -> LogNorm:
     low, high = (float(good.min()), float(good.max())) if good.size else (1.0, 10.0)
     if high / low < 1.2:
         low, high = low / 1.2, high * 1.2
-    return LogNorm(low, high, clip=True)
+    return LogNorm(low, high)

@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike
 
-from fields import Dipole, constants
+from fields import constants
 from fields.compose import Field
 from fields.contract import LineAverages
 from fields.errors import InputError, nearest
@@ -273,4 +273,6 @@ def bounce_Y(pitch_deg: ArrayLike) -> Floats:
 
 
 def _unit_dipole() -> LineAverages:
+    from fields import Dipole  # nothing else here knows which magnetic model it works in
+
     return Dipole(b0_nT=1.0).lines()
