@@ -85,7 +85,7 @@ def advance(
     Returns
     -------
     end : ndarray, shape (n, 10)
-    track : ndarray, shape (n, n_time, 4)
+    track : ndarray, shape (4, n, n_time)
 
     Raises
     ------
@@ -103,13 +103,13 @@ def advance(
         tolerance,
     )
     end = np.full((state.shape[0], 10), np.nan)
-    track = np.full((state.shape[0], times.size, 4), np.nan)
+    track = np.full((4, state.shape[0], times.size), np.nan)
     for low in range(0, state.shape[0], BATCH):
         if stopped is not None and stopped():
             raise Interrupted
         batch = slice(low, low + BATCH)
         kernel.module.advance(
-            state[batch], kernel.constants, kernel.edges, kernel.segments, rules, times, end[batch], track[batch]
+            state[batch], kernel.constants, kernel.edges, kernel.segments, rules, times, end[batch], track[:, batch]
         )
         if tick is not None:
             tick(state[batch].shape[0])
@@ -130,7 +130,7 @@ def run_chunk(
     prepared = prepare(scenario, first, stop)
     end, track = advance(scenario, kernel, prepared.state, tolerance, scenario.save_times_h, tick, stopped)
     ends = {name: end[:, i].astype(DTYPES["end", name]) for i, name in enumerate(END_ORDER)}
-    tracks = {column.name: track[:, :, i] for i, column in enumerate(TRACK)} if scenario.save_times_h.size else {}
+    tracks = {column.name: track[i] for i, column in enumerate(TRACK)} if scenario.save_times_h.size else {}
     work = {
         "accepted": float(end[:, ACCEPTED].sum()),
         "rejected": float(end[:, REJECTED].sum()),
@@ -151,6 +151,6 @@ def compile_kernel(scenario: Scenario) -> Kernel:
         rules,
         scenario.save_times_h,
         np.zeros((0, 10)),
-        np.zeros((0, scenario.save_times_h.size, 4)),
+        np.zeros((4, 0, scenario.save_times_h.size)),
     )
     return kernel

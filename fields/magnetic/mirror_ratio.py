@@ -40,7 +40,22 @@ COEFFICIENTS = (
     5.471766788737386e-09,
     -7.536518411646715e-09,
 )
-DEGREE = len(COEFFICIENTS) - 1
+DERIVATIVE = (*(i * c for i, c in enumerate(COEFFICIENTS) if i), 0.0)
+TOP = len(COEFFICIENTS) // 4 * 4
+
+
+@pointwise
+def polynomial(x: Any, c: Any) -> Any:
+    """``sum of c[i] x^i`` for 27 coefficients, as four polynomials of x^4: a quarter of the length of Horner's chain."""
+    x2 = x * x
+    x4 = x2 * x2
+    p0, p1, p2 = c[TOP], c[TOP + 1], c[TOP + 2]
+    p3 = c[TOP - 1]
+    for i in range(TOP - 4, 0, -4):
+        p0, p1, p2 = p0 * x4 + c[i], p1 * x4 + c[i + 1], p2 * x4 + c[i + 2]
+        p3 = p3 * x4 + c[i - 1]
+    p0, p1, p2 = p0 * x4 + c[0], p1 * x4 + c[1], p2 * x4 + c[2]
+    return (p0 + p1 * x) + x2 * (p2 + p3 * x)
 
 
 @pointwise
@@ -51,10 +66,6 @@ def cot2_and_slope(kappa: Any) -> Any:
     """
     z = inverse_cube_root(1.0 + kappa)
     x = 2.0 * z - 1.0
-    g = COEFFICIENTS[DEGREE]
-    d = 0.0
-    for i in range(DEGREE - 1, -1, -1):
-        d = d * x + g
-        g = g * x + COEFFICIENTS[i]
+    g, d = polynomial(x, COEFFICIENTS), polynomial(x, DERIVATIVE)
     # d/dkappa of kappa (1 + kappa) g, with dz/dkappa = -z^4 / 3 and dx = 2 dz
     return kappa * (1.0 + kappa) * g, (1.0 + 2.0 * kappa) * g - kappa * z * d * (2.0 / 3.0)

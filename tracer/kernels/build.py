@@ -47,7 +47,7 @@ class Kernel:
     ----------
     module : module
         With the compiled entry points.
-    constants : ndarray
+    constants : tuple of float
         Arguments of the point functions that do not vary.
     edges : ndarray, shape (n_segment + 1,)
         Corners of all drivers together, hours; -inf and +inf where nothing varies.
@@ -58,7 +58,7 @@ class Kernel:
     """
 
     module: ModuleType
-    constants: Floats
+    constants: tuple[float, ...]
     edges: Floats
     segments: Floats
     fresh: bool
@@ -86,10 +86,10 @@ def function_files(field: Field) -> Iterator[str]:
         yield inspect.getsourcefile(function) or ""
 
 
-def field_source(field: Field) -> tuple[str, Floats]:
+def field_source(field: Field) -> tuple[str, tuple[float, ...]]:
     """Text of the module that joins the point functions, and the constants it takes.
 
-    Constants come as an array and not as literals, so that runs which differ in numbers only share one kernel.
+    Constants come as arguments and not as literals, so that runs which differ in numbers only share one kernel.
     """
     constants: list[float] = list(field.magnetic_terms.arguments)
     magnetic_arguments = "".join(f", C[{i}]" for i in range(len(constants)))
@@ -110,16 +110,20 @@ def field_source(field: Field) -> tuple[str, Floats]:
                 constants.append(float(argument))
         terms.append(f"    p{i}, r{i}, a{i} = electric_{i}(r, s, c{''.join(arguments)})")
     sums = (" + ".join(f"{part}{i}" for i in range(len(terms))) or "0.0 * s" for part in "pra")
+    columns = 1 + 2 * len(field.drivers)
+    loads = ", ".join(f"W[at + {i} * stride]" for i in range(columns))
     body = [
         "from tracer.kernels.arith import inlined",
         *lines,
+        *("", f"DRIVERS = {len(field.drivers)}"),
+        *("", "", "@inlined", "def drivers(W, at, stride):", f"    return ({loads},)"),
         *("", "", "@inlined", "def equator(r, s, c, C):", f"    return equator_(r, s, c{magnetic_arguments})"),
         *("", "", "@inlined", "def mirror(k, r, s, c, C):", f"    return mirror_(k, r, s, c{magnetic_arguments})"),
         *("", "", "@inlined", "def foot(r, s, c, foot_re, C):"),
         f"    return foot_(r, s, c, foot_re{magnetic_arguments})",
         *("", "", "@inlined", "def potential(r, s, c, t, C, D):", *terms, f"    return {', '.join(sums)}", ""),
     ]
-    return "\n".join(body), np.array(constants)
+    return "\n".join(body), tuple(constants)
 
 
 def driver_table(drivers: tuple[Driver, ...]) -> tuple[Floats, Floats]:

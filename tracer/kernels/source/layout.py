@@ -1,25 +1,26 @@
 """The work array: one row for each quantity, one column for each lane, flat, so that no two rows can alias.
 
-``W[row * LANES + lane]``. Rows of drivers come last: the start of the segment, then value there and slope of each driver.
+``W[row * LANES + lane]``. The rows of the drivers come last: the start of the segment, then value there and slope of each.
 """
 
 from __future__ import annotations
 
 from .field import DRIVERS
 
-LANES = 8  # doubles in the widest vector register
+LANES = 8
 
 (
     R, PHI, T, H, K1, L1, TURNS,  # the particle: place, time, next step, slopes, whole turns
     MU, K, Q, M,  # what it is: invariants, 1/charge, 2/(m c^2)
-    G, GT,  # depth in the loss cone and its rate
-    LIMIT, NEXT, WATCH,  # end of the segment or the run; next time to save; 1 while the cone is watched for
-    STEP, TN, RN, PN, KN, LN, GN, GTN, OK, HN, FLAG,  # the trial
+    BM, BT,  # its mirror field and the rate of that
+    LIMIT, NEXT, WATCH,  # end of the segment or the run; next time to save; 1 while the loss cone is watched for
+    STEP, TN, RN, PN, KN, LN, BMN, BTN, OK, HN, FLAG,  # the trial
     K6, K7, K8, K9, K10, K11, K12,  # stages that the interpolant needs
     L6, L7, L8, L9, L10, L11, L12,
     F0,  # the interpolant: 8 rows for r, 8 for phi
 ) = range(42)  # fmt: skip
-SR, SP = F0 + 16, F0 + 17  # a saved point
-D0 = F0 + 18
+F8 = F0 + 8
+STOP, SR, SP = F0 + 16, F0 + 17, F0 + 18  # up to where to save, and a saved point
+D0 = F0 + 19
 ROWS = D0 + 1 + 2 * DRIVERS
 SIZE = ROWS * LANES

@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import compiled
+from tracer.kernels.arith import compiled, inlined
 
 from . import tableau as tb
 from .drift import slope
@@ -16,7 +16,7 @@ TINY = 1e-300  # keeps 0/0 away where the field is uniform along the step
 # fmt: off
 
 
-@compiled
+@inlined
 def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D: Any) -> Any:
     """Try a step of `h` hours.
 
@@ -109,12 +109,18 @@ def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D:
 
 
 @compiled
+def trial_at(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D: Any) -> Any:
+    """`trial`, for scalar code: the end point alone."""
+    rn, pn, _, _ = trial(t, r, phi, h, k1, l1, p, C, D)
+    return rn, pn
+
+
+@inlined
 def interpolant(
     t: Any, r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, k13: Any, l13: Any, stages: Any,
-    p: Any, C: Any, D: Any, F: Any,
-) -> None:
-    """Write the interpolant's coefficients over an accepted step into `F`, shape (16,): eight for r, eight for
-    phi."""
+    p: Any, C: Any, D: Any,
+) -> Any:
+    """The interpolant's coefficients over an accepted step: eight for r, eight for phi."""
     k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
     k14, l14 = slope(
         t + tb.C14 * h, r + h * (tb.A14_1 * k1 + tb.A14_7 * k7 + tb.A14_8 * k8 + tb.A14_9 * k9 + tb.A14_10 * k10 +
@@ -166,20 +172,15 @@ def interpolant(
         h * (tb.D7_1 * l1 + tb.D7_6 * l6 + tb.D7_7 * l7 + tb.D7_8 * l8 + tb.D7_9 * l9 + tb.D7_10 * l10 + tb.D7_11 *
         l11 + tb.D7_12 * l12 + tb.D7_13 * l13 + tb.D7_14 * l14 + tb.D7_15 * l15 + tb.D7_16 * l16)
     )
-    F[0], F[8] = r, phi
-    F[1], F[9] = rn - r, pn - phi
-    F[2], F[10] = h * k1 - F[1], h * l1 - F[9]
-    F[3], F[11] = 2.0 * F[1] - h * (k1 + k13), 2.0 * F[9] - h * (l1 + l13)
-    F[4], F[12] = f4r, f4p
-    F[5], F[13] = f5r, f5p
-    F[6], F[14] = f6r, f6p
-    F[7], F[15] = f7r, f7p
-
-
-@compiled
-def along(F: Any, o: Any, x: Any) -> Any:
-    """The interpolant at fraction `x` of the step; `o` is 0 for r, 8 for phi."""
-    y = 1.0 - x
-    return F[o] + x * (
-        F[o + 1] + y * (F[o + 2] + x * (F[o + 3] + y * (F[o + 4] + x * (F[o + 5] + y * (F[o + 6] + x * F[o + 7])))))
+    dr, dp = rn - r, pn - phi
+    return (
+        r, dr, h * k1 - dr, 2.0 * dr - h * (k1 + k13), f4r, f5r, f6r, f7r,
+        phi, dp, h * l1 - dp, 2.0 * dp - h * (l1 + l13), f4p, f5p, f6p, f7p,
     )
+
+
+@inlined
+def along(f0: Any, f1: Any, f2: Any, f3: Any, f4: Any, f5: Any, f6: Any, f7: Any, x: Any) -> Any:
+    """The interpolant at fraction `x` of the step."""
+    y = 1.0 - x
+    return f0 + x * (f1 + y * (f2 + x * (f3 + y * (f4 + x * (f5 + y * (f6 + x * f7))))))
