@@ -46,7 +46,8 @@ TOP = len(COEFFICIENTS) // 4 * 4
 
 @pointwise
 def polynomial(x: Any, c: Any) -> Any:
-    """``sum of c[i] x^i`` for 27 coefficients, as four polynomials of x^4: a quarter of the length of Horner's chain."""
+    """``sum of c[i] x^i`` for 27 coefficients, as four polynomials of x^4: a quarter of the length of Horner's
+    chain."""
     x2 = x * x
     x4 = x2 * x2
     p0, p1, p2 = c[TOP], c[TOP + 1], c[TOP + 2]

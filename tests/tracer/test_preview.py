@@ -11,6 +11,7 @@ from small_runs import number, population, span
 from storm_runs import steady, storm, storm_field
 
 import tracer
+from tracer import preview
 from tracer.scenario import Output
 
 RUN = storm(
@@ -69,7 +70,9 @@ def test_warnings_and_validity_are_told() -> None:
     assert len(names) == 4
 
 
-def test_memory_grows_with_the_tracks_and_the_threads() -> None:
+def test_memory_grows_with_the_tracks_and_the_threads(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(preview, "_work", lambda scenario, threads: {})  # what takes time, and is not looked at here
+
     def memory(every_min: float, threads: int) -> int:
         run = storm(population(count=10**6), output=Output(every_min=every_min))
         return int(tracer.check(run, threads)["memory_bytes"])

@@ -41,8 +41,8 @@ def watched_radius(result: Result) -> float | None:
 def busiest_sector(result: Result, found: Crossings) -> tuple[float, float]:
     """The three hours of local time, from a full hour, in which most particles first arrive.
 
-    Sectors near which particles start are passed over, for arrivals there say little of the drift; unless no other sees
-    any.
+    Sectors near which particles start are passed over, for arrivals there say little of the drift; unless no other
+    sees any.
     """
     begins: Floats = np.arange(0.0, 24.0, SECTOR_STEP_H)
     sectors = [(float(begin), float((begin + SECTOR_H) % 24.0)) for begin in begins]

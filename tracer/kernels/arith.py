@@ -38,12 +38,12 @@ def entry_point(function: Function) -> Function:
     return cast(Function, njit(nogil=True, cache=True, **OPTIONS)(function))
 
 
-
 @intrinsic  # type: ignore[untyped-decorator]
 def prefer_widest_vectors(context):  # type: ignore[no-untyped-def]
     """Ask LLVM to use the widest registers in the calling function.
 
-    On processors with AVX-512 it keeps to half of their width by default, for fear of a lower clock; a step of all lanes takes 1.7 times as long then.
+    On processors with AVX-512 it keeps to half of their width by default, for fear of a lower clock; a step of all
+    lanes takes 1.7 times as long then.
     """
 
     def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]

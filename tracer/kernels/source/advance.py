@@ -1,7 +1,7 @@
 """Particles from release to end: the entry point of a compiled field.
 
-Eight ride in lockstep lanes (`lanes`); a lane whose particle has ended takes the next. What stands here is scalar and rare: releasing,
-corners of drivers, boundaries, ends.
+Eight ride in lockstep lanes (`lanes`); a lane whose particle has ended takes the next. What stands here is scalar
+and rare: releasing, corners of drivers, boundaries, ends.
 """
 
 from __future__ import annotations
@@ -76,42 +76,50 @@ def segment_at(edges: Any, t: Any, sign: Any) -> Any:
 
 
 @compiled
-def enter_segment(W: Any, l: Any, seg: Any, C: Any, edges: Any, segments: Any, t_end: Any, sign: Any) -> None:
-    """Give lane `l` the drivers of a segment, its end, and the slopes there."""
+def enter_segment(W: Any, lane: Any, seg: Any, C: Any, edges: Any, segments: Any, t_end: Any, sign: Any) -> None:
+    """Give `lane` the drivers of a segment, its end, and the slopes there."""
     for i in range(segments.shape[1]):
-        W[(D0 + i) * LANES + l] = segments[seg, i]
+        W[(D0 + i) * LANES + lane] = segments[seg, i]
     limit = edges[seg + 1] if sign > 0.0 else edges[seg]
-    W[LIMIT * LANES + l] = limit if sign * (t_end - limit) > 0.0 else t_end
-    t, r, phi = W[T * LANES + l], W[R * LANES + l], W[PHI * LANES + l]
-    k1, l1, bm, bt = motion_at(t, r, phi, particle(W, l), C, drivers(W, D0 * LANES + l, LANES))
-    W[K1 * LANES + l], W[L1 * LANES + l], W[BM * LANES + l], W[BT * LANES + l] = k1, l1, bm, bt
+    W[LIMIT * LANES + lane] = limit if sign * (t_end - limit) > 0.0 else t_end
+    t, r, phi = W[T * LANES + lane], W[R * LANES + lane], W[PHI * LANES + lane]
+    k1, l1, bm, bt = motion_at(t, r, phi, particle(W, lane), C, drivers(W, D0 * LANES + lane, LANES))
+    W[K1 * LANES + lane], W[L1 * LANES + lane], W[BM * LANES + lane], W[BT * LANES + lane] = k1, l1, bm, bt
 
 
 @compiled
-def release(W: Any, l: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any, i: Any) -> Any:
-    """Put particle `i` into lane `l`; returns why it ended at once, or DRIFTING, and its driver segment and next saved time."""
+def release(
+    W: Any, lane: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any, i: Any
+) -> Any:
+    """Put particle `i` into `lane`; returns why it ended at once, or DRIFTING, and its driver segment and next
+    saved time."""
     t_end, sign, outer, inner, foot_re, cone, tolerance = rules
     r, phi, t = P[i, 0], P[i, 1], P[i, 2]
-    W[R * LANES + l], W[PHI * LANES + l], W[T * LANES + l], W[TURNS * LANES + l] = r, phi, t, 0.0
-    W[MU * LANES + l], W[K * LANES + l], W[Q * LANES + l], W[M * LANES + l] = P[i, 3], P[i, 4], P[i, 5], P[i, 6]
+    W[R * LANES + lane], W[PHI * LANES + lane], W[T * LANES + lane], W[TURNS * LANES + lane] = r, phi, t, 0.0
+    W[MU * LANES + lane], W[K * LANES + lane], W[Q * LANES + lane], W[M * LANES + lane] = (
+        P[i, 3],
+        P[i, 4],
+        P[i, 5],
+        P[i, 6],
+    )
     seg = segment_at(edges, t, sign)
-    enter_segment(W, l, seg, C, edges, segments, t_end, sign)
-    k1 = W[K1 * LANES + l]
-    W[H * LANES + l] = initial_step(k1, W[L1 * LANES + l], tolerance)
+    enter_segment(W, lane, seg, C, edges, segments, t_end, sign)
+    k1 = W[K1 * LANES + lane]
+    W[H * LANES + lane] = initial_step(k1, W[L1 * LANES + lane], tolerance)
     end[i, ACCEPTED], end[i, REJECTED] = 0.0, 0.0
     j = np.searchsorted(sign * times, sign * t)
     if j < times.size and times[j] == t:
         track[0, i, j], track[1, i, j] = r, phi
         j += 1
-    W[NEXT * LANES + l] = times[j] if j < times.size else sign * EVER
+    W[NEXT * LANES + lane] = times[j] if j < times.size else sign * EVER
     cause = DRIFTING
-    W[WATCH * LANES + l] = 0.0
+    W[WATCH * LANES + lane] = 0.0
     if cone != CONE_OFF:
-        if depth_in_cone(r, phi, particle(W, l), foot_re, C) >= 0.0:
+        if depth_in_cone(r, phi, particle(W, lane), foot_re, C) >= 0.0:
             end[i, CONE_TIME] = t
             cause = CONE if cone == CONE_STOP else cause
         else:
-            W[WATCH * LANES + l] = 1.0
+            W[WATCH * LANES + lane] = 1.0
     if r > outer or (r == outer and sign * k1 > 0.0):
         cause = OUTER
     if r < inner or (r == inner and sign * k1 < 0.0):
@@ -120,14 +128,15 @@ def release(W: Any, l: Any, P: Any, C: Any, edges: Any, segments: Any, rules: An
 
 
 @compiled
-def meet(W: Any, l: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
-    """What the particle in lane `l` met within its accepted step: DRIFTING, or the cause of its end, which is then the step's end."""
+def meet(W: Any, lane: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
+    """What the particle in `lane` met within its accepted step: DRIFTING, or the cause of its end, which is then
+    the step's end."""
     _, _, outer, inner, foot_re, cone, _ = rules
-    flag = int(W[FLAG * LANES + l])
-    F = W[F0 * LANES + l : (F0 + 16) * LANES + l : LANES]
-    p, D = particle(W, l), drivers(W, D0 * LANES + l, LANES)
-    t, r, phi, h = W[T * LANES + l], W[R * LANES + l], W[PHI * LANES + l], W[STEP * LANES + l]
-    k1, l1 = W[K1 * LANES + l], W[L1 * LANES + l]
+    flag = int(W[FLAG * LANES + lane])
+    F = W[F0 * LANES + lane : (F0 + 16) * LANES + lane : LANES]
+    p, D = particle(W, lane), drivers(W, D0 * LANES + lane, LANES)
+    t, r, phi, h = W[T * LANES + lane], W[R * LANES + lane], W[PHI * LANES + lane], W[STEP * LANES + lane]
+    k1, l1 = W[K1 * LANES + lane], W[L1 * LANES + lane]
     x, which, cone_x = NEVER, DRIFTING, NEVER
     if flag & int(CROSSING):
         x, which = first_crossing(OUTER, F, outer, inner, foot_re, p, C), OUTER
@@ -139,31 +148,31 @@ def meet(W: Any, l: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
     if cone_x < NEVER and cone_x <= x:
         at, re, pe = polished(CONE, cone_x, t, r, phi, h, k1, l1, outer, inner, foot_re, p, C, D)
         end[i, CONE_TIME] = t + at
-        W[WATCH * LANES + l] = 0.0
+        W[WATCH * LANES + lane] = 0.0
         if cone == CONE_STOP:
-            return end_step(W, l, CONE, t + at, re, pe)
+            return end_step(W, lane, CONE, t + at, re, pe)
     if x >= NEVER:
         return DRIFTING
     at, _, pe = polished(which, x, t, r, phi, h, k1, l1, outer, inner, foot_re, p, C, D)
-    return end_step(W, l, which, t + at, outer if which == OUTER else inner, pe)
+    return end_step(W, lane, which, t + at, outer if which == OUTER else inner, pe)
 
 
 @compiled
-def end_step(W: Any, l: Any, cause: Any, t: Any, r: Any, phi: Any) -> Any:
-    """Let the step of lane `l` end early; returns `cause`."""
+def end_step(W: Any, lane: Any, cause: Any, t: Any, r: Any, phi: Any) -> Any:
+    """Let the step of `lane` end early; returns `cause`."""
     # saved times come from the interpolant up to here; none of them is this end itself
-    W[STOP * LANES + l] = t
-    W[TN * LANES + l], W[RN * LANES + l], W[PN * LANES + l] = t, r, phi
+    W[STOP * LANES + lane] = t
+    W[TN * LANES + lane], W[RN * LANES + lane], W[PN * LANES + lane] = t, r, phi
     return cause
 
 
 @compiled
-def conclude(W: Any, l: Any, P: Any, C: Any, cause: Any, end: Any, i: Any) -> None:
-    """Write the end of particle `i` in lane `l`."""
-    r, phi = W[R * LANES + l], W[PHI * LANES + l]
-    end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T * LANES + l], r, cause
-    end[i, END_MLT], end[i, END_ENERGY], end[i, END_PITCH] = observed(r, phi, particle(W, l), C)
-    end[i, TURNED] = W[TURNS * LANES + l] + (phi - P[i, 1]) / TWO_PI
+def conclude(W: Any, lane: Any, P: Any, C: Any, cause: Any, end: Any, i: Any) -> None:
+    """Write the end of particle `i` in `lane`."""
+    r, phi = W[R * LANES + lane], W[PHI * LANES + lane]
+    end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T * LANES + lane], r, cause
+    end[i, END_MLT], end[i, END_ENERGY], end[i, END_PITCH] = observed(r, phi, particle(W, lane), C)
+    end[i, TURNED] = W[TURNS * LANES + lane] + (phi - P[i, 1]) / TWO_PI
 
 
 @compiled
@@ -173,22 +182,22 @@ def save_all(W: Any, owner: Any, following: Any, sign: Any, times: Any, track: A
     while waiting:
         point_all(W)
         waiting = False
-        for l in range(LANES):
-            if owner[l] >= 0 and sign * (W[STOP * LANES + l] - W[NEXT * LANES + l]) >= 0.0:
-                i, j = owner[l], following[l]
-                track[0, i, j], track[1, i, j] = W[SR * LANES + l], W[SP * LANES + l]
-                following[l] = j + 1
-                W[NEXT * LANES + l] = times[j + 1] if j + 1 < times.size else sign * EVER
+        for lane in range(LANES):
+            if owner[lane] >= 0 and sign * (W[STOP * LANES + lane] - W[NEXT * LANES + lane]) >= 0.0:
+                i, j = owner[lane], following[lane]
+                track[0, i, j], track[1, i, j] = W[SR * LANES + lane], W[SP * LANES + lane]
+                following[lane] = j + 1
+                W[NEXT * LANES + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
                 waiting = True
 
 
 @compiled
-def rest(W: Any, l: Any) -> None:
+def rest(W: Any, lane: Any) -> None:
     """Fill an idle lane with a particle that stands still at a safe place."""
     for row in range(SIZE // LANES):
-        W[row * LANES + l] = 0.0
-    W[R * LANES + l], W[H * LANES + l], W[Q * LANES + l] = 5.0, 1e-3, 1.0
-    W[LIMIT * LANES + l], W[NEXT * LANES + l] = EVER, EVER
+        W[row * LANES + lane] = 0.0
+    W[R * LANES + lane], W[H * LANES + lane], W[Q * LANES + lane] = 5.0, 1e-3, 1.0
+    W[LIMIT * LANES + lane], W[NEXT * LANES + lane] = EVER, EVER
 
 
 @entry_point
@@ -217,57 +226,59 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
     owner, seg, following = np.full(LANES, -1), np.zeros(LANES, np.int64), np.zeros(LANES, np.int64)
     cause = np.full(LANES, DRIFTING)
     taken, busy = 0, 0
-    for l in range(LANES):
-        rest(W, l)
+    for lane in range(LANES):
+        rest(W, lane)
     refill = True
     while refill or busy > 0:
         if refill:
-            for l in range(LANES):
-                while owner[l] < 0 and taken < P.shape[0]:
+            for lane in range(LANES):
+                while owner[lane] < 0 and taken < P.shape[0]:
                     i = taken
                     taken += 1
-                    cause[l], seg[l], following[l] = release(W, l, P, C, edges, segments, rules, times, end, track, i)
-                    if cause[l] != DRIFTING or W[T * LANES + l] == t_end:
-                        conclude(W, l, P, C, cause[l], end, i)
+                    cause[lane], seg[lane], following[lane] = release(
+                        W, lane, P, C, edges, segments, rules, times, end, track, i
+                    )
+                    if cause[lane] != DRIFTING or W[T * LANES + lane] == t_end:
+                        conclude(W, lane, P, C, cause[lane], end, i)
                     else:
-                        owner[l] = i
+                        owner[lane] = i
                         busy += 1
-                if owner[l] < 0:
-                    rest(W, l)
+                if owner[lane] < 0:
+                    rest(W, lane)
             refill = False
             continue
         step_all(W, C, sign, 1.0 / tolerance, outer, inner, foot_re)
         saving, meeting = False, False
-        for l in range(LANES):
-            if owner[l] < 0:
-                W[OK * LANES + l] = 0.0
+        for lane in range(LANES):
+            if owner[lane] < 0:
+                W[OK * LANES + lane] = 0.0
                 continue
-            saving = saving or sign * (W[STOP * LANES + l] - W[NEXT * LANES + l]) >= 0.0
-            meeting = meeting or W[FLAG * LANES + l] > ENDING
+            saving = saving or sign * (W[STOP * LANES + lane] - W[NEXT * LANES + lane]) >= 0.0
+            meeting = meeting or W[FLAG * LANES + lane] > ENDING
         if saving or meeting:
             interpolate_all(W, C)
-            for l in range(LANES):
-                if owner[l] >= 0 and W[FLAG * LANES + l] > ENDING:
-                    cause[l] = meet(W, l, C, rules, end, owner[l])
+            for lane in range(LANES):
+                if owner[lane] >= 0 and W[FLAG * LANES + lane] > ENDING:
+                    cause[lane] = meet(W, lane, C, rules, end, owner[lane])
             if saving:
                 save_all(W, owner, following, sign, times, track)
         accept_all(W)
-        for l in range(LANES):
-            i = owner[l]
+        for lane in range(LANES):
+            i = owner[lane]
             if i < 0:
                 continue
-            good = W[OK * LANES + l] > 0.0
+            good = W[OK * LANES + lane] > 0.0
             end[i, ACCEPTED if good else REJECTED] += 1.0
-            if not good and (W[H * LANES + l] < LEAST_STEP or end[i, ACCEPTED] + end[i, REJECTED] > MOST_STEPS):
-                cause[l] = FAILED
-            if cause[l] != DRIFTING or (good and W[T * LANES + l] == t_end):
-                conclude(W, l, P, C, cause[l], end, i)
-                owner[l] = -1
+            if not good and (W[H * LANES + lane] < LEAST_STEP or end[i, ACCEPTED] + end[i, REJECTED] > MOST_STEPS):
+                cause[lane] = FAILED
+            if cause[lane] != DRIFTING or (good and W[T * LANES + lane] == t_end):
+                conclude(W, lane, P, C, cause[lane], end, i)
+                owner[lane] = -1
                 busy -= 1
                 refill = True
-            elif good and W[T * LANES + l] == W[LIMIT * LANES + l]:
-                seg[l] += 1 if sign > 0.0 else -1
-                enter_segment(W, l, seg[l], C, edges, segments, t_end, sign)
+            elif good and W[T * LANES + lane] == W[LIMIT * LANES + lane]:
+                seg[lane] += 1 if sign > 0.0 else -1
+                enter_segment(W, lane, seg[lane], C, edges, segments, t_end, sign)
     if times.size > 0:
         for i in range(P.shape[0]):
             observe_row(track[0, i], track[1, i], track[2, i], track[3, i], (P[i, 3], P[i, 4], P[i, 5], P[i, 6]), C)

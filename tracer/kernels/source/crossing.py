@@ -74,8 +74,8 @@ def root(which: Any, F: Any, a: Any, b: Any, outer: Any, inner: Any, foot_re: An
 def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """Smallest fraction of the step at which the excess turns from negative to positive; NEVER if it does not.
 
-    Between samples that are all negative the path may touch the limit and return. Next to the largest of three neighbours it rises by less than
-    they differ; only if that could reach the limit is the summit searched for.
+    Between samples that are all negative the path may touch the limit and return. Next to the largest of three
+    neighbours it rises by less than they differ; only if that could reach the limit is the summit searched for.
     """
     before = ga = excess_along(which, F, 0.0, outer, inner, foot_re, p, C)
     width = 1.0 / SAMPLES
@@ -102,7 +102,8 @@ def polished(
 ) -> Any:  # fmt: skip
     """Step length, r and phi at the crossing near fraction `x`: as accurate as the path itself.
 
-    Newton's method on true steps, from the interpolant's point; a last shift of less than 1e-6 of the step is taken to first order.
+    Newton's method on true steps, from the interpolant's point; a last shift of less than 1e-6 of the step is taken
+    to first order.
     """
     step = x * h
     for _ in range(POLISHINGS):

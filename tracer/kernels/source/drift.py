@@ -19,7 +19,8 @@ from .field import equator, foot, mirror, potential
 
 @inlined
 def motion(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
-    """dr/dt and dphi/dt per hour for the particle `p` = (mu, k, 1/q, 2/(m c^2)), its mirror field and the rate of that.
+    """dr/dt and dphi/dt per hour for the particle `p` = (mu, k, 1/q, 2/(m c^2)), its mirror field and the rate of
+    that.
 
     `C` are the constants of the field, `D` its drivers in this segment.
     """

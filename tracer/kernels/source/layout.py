@@ -1,6 +1,7 @@
 """The work array: one row for each quantity, one column for each lane, flat, so that no two rows can alias.
 
-``W[row * LANES + lane]``. The rows of the drivers come last: the start of the segment, then value there and slope of each.
+``W[row * LANES + lane]``. The rows of the drivers come last: the start of the segment, then value there and slope
+of each.
 """
 
 from __future__ import annotations

@@ -51,7 +51,9 @@ def path(F: Any, x: Any) -> Any:
 
 
 @compiled
-def meeting(F: Any, t: Any, r: Any, phi: Any, step: Any, k1: Any, l1: Any, watching: Any, rules: Any, p: Any, C: Any, D: Any) -> Any:
+def meeting(
+    F: Any, t: Any, r: Any, phi: Any, step: Any, k1: Any, l1: Any, watching: Any, rules: Any, p: Any, C: Any, D: Any
+) -> Any:
     """What the step met first: cause or DRIFTING, its time, place, and when the cone was entered (NaN if not)."""
     _, _, outer, inner, foot_re, cone, _ = rules
     x, which, cone_t = NEVER, DRIFTING, np.nan
