@@ -6,13 +6,13 @@ from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
-    from fields.compose import Field, compose
     from fields.contract import Card, ElectricModel, LineAverages, MagneticModel, MagneticTerms, Parameter, Term
     from fields.drivers import Driver
     from fields.electric.corotation import Corotation
     from fields.electric.uniform import Uniform
     from fields.electric.volland_stern import VollandStern
     from fields.errors import InputError
+    from fields.field import Field, compose
     from fields.magnetic.dipole import Dipole
     from fields.series import Series, read_series
 
@@ -23,7 +23,7 @@ _HOMES = {
     "Dipole": "fields.magnetic.dipole",
     "Driver": "fields.drivers",
     "ElectricModel": "fields.contract",
-    "Field": "fields.compose",
+    "Field": "fields.field",
     "InputError": "fields.errors",
     "LineAverages": "fields.contract",
     "MagneticModel": "fields.contract",
@@ -33,7 +33,7 @@ _HOMES = {
     "Term": "fields.contract",
     "Uniform": "fields.electric.uniform",
     "VollandStern": "fields.electric.volland_stern",
-    "compose": "fields.compose",
+    "compose": "fields.field",
     "read_series": "fields.series",
 }
 

@@ -9,11 +9,11 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from fields.compose import compose
 from fields.contract import Card, MagneticModel, Parameter
 from fields.drivers import Driver
 from fields.electric.corotation import Corotation
 from fields.electric.volland_stern import VollandStern
+from fields.field import compose
 from tracer import store
 from tracer.population import initial_state
 from tracer.records import END, TRACK, Chunk

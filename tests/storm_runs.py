@@ -15,10 +15,10 @@ import small_runs
 from scipy.integrate import OdeSolution, solve_ivp
 from scipy.optimize import brentq, minimize_scalar
 
-from fields.compose import Field, compose
 from fields.drivers import Driver
 from fields.electric.corotation import Corotation
 from fields.electric.volland_stern import VollandStern
+from fields.field import Field, compose
 from fields.magnetic.dipole import Dipole
 from tracer.kernels.build import Kernel
 from tracer.scenario import Population, Scenario
@@ -108,7 +108,9 @@ class Path:
         if tops.size == 0 or values[tops[0]] <= values[0]:
             return None
         bounds = sorted((nodes[tops[0] - 1], nodes[tops[0] + 1]))
-        best = minimize_scalar(lambda t: -excess(*self.at(t)), bounds=bounds, method="bounded", options={"xatol": 1e-10})
+        best = minimize_scalar(
+            lambda t: -excess(*self.at(t)), bounds=bounds, method="bounded", options={"xatol": 1e-10}
+        )
         return float(best.x), -float(best.fun)
 
 

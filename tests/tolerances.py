@@ -15,7 +15,9 @@ class Tolerance(NamedTuple):
 TABLE = {
     "rounding": Tolerance(1e-14, "the same formula in another order of operations"),
     "point function": Tolerance(1e-14, "numpy's array and scalar loops may differ in the last bits of power and cbrt"),
-    "sin and cos": Tolerance(2e-15, "absolute: the angle is doubled twice, which multiplies a rounding of 1e-16 by a few"),
+    "sin and cos": Tolerance(
+        2e-15, "absolute: the angle is doubled twice, which multiplies a rounding of 1e-16 by a few"
+    ),
     "mirror ratio": Tolerance(1e-13, "what the polynomial of degree 26 promises at all pitch angles"),
     "mirror ratio slope": Tolerance(1e-12, "its derivative, where the last coefficients count 26 times"),
     "bounce integral": Tolerance(1e-10, "what is asked of T and Y from 1 to 89.9 degrees, and of Y / cos^2 above"),

@@ -15,9 +15,9 @@ from tracer.scenario import Scenario
 PILOTS = 384
 PILOT_SEED = 20270304
 AUDIT_SEED = 20270305
-# The pilot's two local tolerances: of the target, and of the coarse one. The coarse one is also the loosest in use: it holds
-# the Hamiltonian of a steady field to 1e-9 at a target of 1e-6, where slow particles would meet the target with far less.
-COARSE, FINE = 5e-4, 1e-3
+# The pilot's two local tolerances: of the target, and of the coarse one. The coarse one is also the loosest in use: it
+# holds the Hamiltonian of a steady field to 1e-9 at a target of 1e-6, where slow particles met the target with far less.
+COARSE, FINE = 1e-4, 1e-3
 FINEST = 1e-14  # R_E
 SAFETY = 0.25
 
@@ -80,9 +80,9 @@ def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
     """
     target = scenario.output.tolerance_re
     state = states_of(scenario, sample(scenario, PILOTS, PILOT_SEED))
-    coarse = max(COARSE * target, FINEST / FINE)
+    coarse = max(COARSE * target, 100.0 * FINEST)
     rough, _ = advance(scenario, kernel, state, coarse, np.empty(0))
-    fine, _ = advance(scenario, kernel, state, FINE * coarse, np.empty(0))
+    fine, _ = advance(scenario, kernel, state, max(FINE * coarse, FINEST), np.empty(0))
     found = quantiles(separation(rough, fine)).most
     local = float(max(coarse * min(SAFETY * target / max(found, 1e-300), 1.0), FINEST))
     # steps go as the eighth root of the tolerance
@@ -94,5 +94,5 @@ def audit(scenario: Scenario, kernel: Kernel, local_tolerance: float) -> Errors:
     """Re-run a sample, other than the pilot's, a thousand times finer, and say how far the ends lie apart."""
     state = states_of(scenario, sample(scenario, PILOTS, AUDIT_SEED))
     kept, _ = advance(scenario, kernel, state, local_tolerance, np.empty(0))
-    finer, _ = advance(scenario, kernel, state, max(FINE * local_tolerance, FINEST / 10), np.empty(0))
+    finer, _ = advance(scenario, kernel, state, max(FINE * local_tolerance, FINEST), np.empty(0))
     return quantiles(separation(kept, finer))

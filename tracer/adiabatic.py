@@ -15,9 +15,9 @@ import numpy as np
 from numpy.typing import ArrayLike
 
 from fields import constants
-from fields.compose import Field
 from fields.contract import LineAverages
 from fields.errors import InputError, nearest
+from fields.field import Field
 from fields.units import (
     RAD_PER_MLT_HOUR,
     Floats,

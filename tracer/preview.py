@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from fields.compose import Field
+from fields.field import Field
 from tracer.accuracy import PILOT_SEED, run_pilot, sample
 from tracer.adiabatic import periods
 from tracer.integrate import advance, compile_kernel, prepare

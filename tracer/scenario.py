@@ -10,7 +10,7 @@ from typing import Literal
 import numpy as np
 
 from fields import constants
-from fields.compose import Field
+from fields.field import Field
 from fields.units import Floats
 
 Spacing = Literal["linear", "area", "log", "isotropic"]

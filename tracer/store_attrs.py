@@ -15,7 +15,7 @@ from typing import Any
 
 import numpy as np
 
-from fields.compose import Field
+from fields.field import Field
 from tracer import __version__
 from tracer.records import CAUTION
 from tracer.scenario import Scenario

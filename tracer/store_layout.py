@@ -8,8 +8,8 @@ from typing import Any
 import h5py
 import numpy as np
 
-from fields.compose import Field
 from fields.drivers import Driver
+from fields.field import Field
 from tracer.records import GROUPS, Column, flag_word
 from tracer.scenario import Scenario
 from tracer.status import Cause

@@ -9,8 +9,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from fields.compose import Field
 from fields.constants import EARTH_RADIUS_M, ELEMENTARY_CHARGE_C, SPEED_OF_LIGHT_M_S
+from fields.field import Field
 from fields.units import RAD_PER_MLT_HOUR, Floats, phi_from_mlt, rest_energy_keV
 from tracer.adiabatic import drift_rate, periods
 from tracer.scenario import Species

@@ -27,8 +27,8 @@ def published() -> dict[float, tuple[float, float, float]]:
 
 
 def test_table_is_the_published_one() -> None:
-    assert COEFFICIENTS == published()
-    assert EPOCHS == tuple(np.arange(1900.0, 2031.0, 5.0))
+    assert published() == COEFFICIENTS
+    assert tuple(np.arange(1900.0, 2031.0, 5.0)) == EPOCHS
 
 
 def test_surface_field_at_an_epoch() -> None:

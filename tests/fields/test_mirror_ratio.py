@@ -9,7 +9,29 @@ from tolerances import bound
 
 from fields.magnetic.mirror_ratio import cot2_and_slope
 
-COT2 = [1e-14, 1e-9, 1e-5, 1e-3, 0.01, 0.05, 0.2, 0.5, 1.0, 2.0, 4.0, 9.0, 25.0, 80.0, 300.0, 1e3, 1e4, 1e5, 1e6, 1e8, 1e10]
+COT2 = [
+    1e-14,
+    1e-9,
+    1e-5,
+    1e-3,
+    0.01,
+    0.05,
+    0.2,
+    0.5,
+    1.0,
+    2.0,
+    4.0,
+    9.0,
+    25.0,
+    80.0,
+    300.0,
+    1e3,
+    1e4,
+    1e5,
+    1e6,
+    1e8,
+    1e10,
+]
 
 
 @pytest.mark.parametrize("cot2", COT2)

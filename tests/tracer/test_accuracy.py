@@ -72,7 +72,7 @@ def test_sample_is_sorted_distinct_and_the_same_each_time(run: Scenario) -> None
     drawn = sample(run, 50, 3)
     assert drawn.size == 50
     assert np.all(np.diff(drawn) > 0)
-    assert 0 <= drawn[0]
+    assert drawn[0] >= 0
     assert drawn[-1] < run.count
     assert np.array_equal(drawn, sample(run, 50, 3))
     assert not np.array_equal(drawn, sample(run, 50, 4))

@@ -236,7 +236,9 @@ def test_quiet_prints_nothing(small: Run) -> None:
     assert Path("storm.h5").is_file()
 
 
-def test_the_default_output_is_in_the_current_folder(small: Run, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_the_default_output_is_in_the_current_folder(
+    small: Run, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
     (tmp_path / "elsewhere").mkdir()
     monkeypatch.chdir(tmp_path / "elsewhere")
     assert small("trace", "../storm.toml", "--quiet").status == 0
@@ -255,7 +257,9 @@ def test_threads_change_nothing(small: Run) -> None:
 def test_overwrite(small: Run) -> None:
     assert small("trace", "storm.toml", "--quiet").status == 0
     before = Path("storm.h5").stat().st_ino
-    assert_fault(small("trace", "storm.toml"), "storm.h5: exists; another name for the output, or --overwrite to replace it")
+    assert_fault(
+        small("trace", "storm.toml"), "storm.h5: exists; another name for the output, or --overwrite to replace it"
+    )
     assert Path("storm.h5").stat().st_ino == before
     assert small("trace", "storm.toml", "--quiet", "--overwrite").status == 0
     assert files() == ["storm-kp.csv", "storm.h5", "storm.toml"]
@@ -284,7 +288,9 @@ def test_missing_run_file(run: Run, command: str) -> None:
 def test_a_trajectory_file_where_a_run_file_belongs(small: Run, command: str) -> None:
     assert small("trace", "storm.toml", "--quiet").status == 0
     before = files()
-    assert_fault(small(command, "storm.h5"), "storm.h5: is an HDF5 file, a result and not a run file; a run file in TOML")
+    assert_fault(
+        small(command, "storm.h5"), "storm.h5: is an HDF5 file, a result and not a run file; a run file in TOML"
+    )
     assert files() == before
 
 
@@ -342,7 +348,9 @@ def test_draw_writes_the_figures(small: Run) -> None:
     written = [line.removeprefix("wrote ") for line in done.out.splitlines()]
     assert sorted(os.path.basename(name) for name in written) == sorted(os.listdir("figures"))
     assert "figures/storm-paths.svg" in written
-    assert_fault(small("draw", "storm.h5", "-o", "figures", "--format", "svg"), "exists; another directory, or --overwrite")
+    assert_fault(
+        small("draw", "storm.h5", "-o", "figures", "--format", "svg"), "exists; another directory, or --overwrite"
+    )
     assert small("draw", "storm.h5", "-o", "figures", "--format", "svg", "--overwrite").status == 0
 
 

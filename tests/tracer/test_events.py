@@ -21,7 +21,12 @@ from tracer.scenario import Domain, Output, Population, Quantity, Scenario
 from tracer.status import Cause
 
 FIELD = storm_runs.STORM
-EVERYWHERE = {"r_re": span(4.0, 9.5), "mlt_h": span(0.0, 24.0), "energy_keV": span(1.0, 300.0, "log"), "pitch_deg": span(6.0, 90.0)}
+EVERYWHERE = {
+    "r_re": span(4.0, 9.5),
+    "mlt_h": span(0.0, 24.0),
+    "energy_keV": span(1.0, 300.0, "log"),
+    "pitch_deg": span(6.0, 90.0),
+}
 
 
 def both(count: int, **given: Any) -> tuple[Population, Population]:
@@ -186,7 +191,9 @@ def ends_with(orbits: Traced, i: int, tolerance: float, **given: Any) -> np.ndar
     return advance(run, orbits.kernel, prepare(run, i, i + 1).state, tolerance, np.empty(0))[0][0]
 
 
-DEPTH = 1e-6  # by which a path pokes through a limit or misses it, R_E or relative; the path is good to a hundredth of it
+DEPTH = (
+    1e-6  # by which a path pokes through a limit or misses it, R_E or relative; the path is good to a hundredth of it
+)
 TOUCHED = 0.01  # h to which the time of so shallow a crossing is known
 
 
@@ -286,7 +293,9 @@ def test_release_on_a_boundary_ends_at_once_only_when_moving_out(r: float, outwa
 @pytest.fixture(scope="module")
 def steep() -> Scenario:
     """Small pitch angles, carried inward: many enter the loss cone, some are drawn inside."""
-    return storm(population(count=24, pitch_deg=span(2.0, 5.0), energy_keV=span(1.0, 30.0, "log")), output=Output(every_min=30.0))
+    return storm(
+        population(count=24, pitch_deg=span(2.0, 5.0), energy_keV=span(1.0, 30.0, "log")), output=Output(every_min=30.0)
+    )
 
 
 def test_loss_cone_times_are_roots_of_the_exact_condition(steep: Scenario) -> None:
@@ -323,7 +332,9 @@ def test_a_flag_changes_nothing_else(steep: Scenario) -> None:
 
 
 def test_drawn_inside_the_loss_cone_ends_at_release(steep: Scenario) -> None:
-    run = replace(steep, populations=(population(count=8, pitch_deg=number(1.5), release_h=span(0.0, 3.0)),), loss_cone="stop")
+    run = replace(
+        steep, populations=(population(count=8, pitch_deg=number(1.5), release_h=span(0.0, 3.0)),), loss_cone="stop"
+    )
     chunk = traced(run, 1e-9)
     assert np.all(chunk.end["cause"] == Cause.ATMOSPHERE)
     for name in ("r_re", "mlt_h"):
@@ -369,6 +380,8 @@ def test_cold_plasma_drifts_alike_whatever_it_is() -> None:
 
 
 def test_no_numerical_failure_in_an_ordinary_run() -> None:
-    run = storm(*both(250, pitch_deg=span(1.0, 90.0), energy_keV=span(0.01, 1000.0, "log")), hours=24.0, loss_cone="stop")
+    run = storm(
+        *both(250, pitch_deg=span(1.0, 90.0), energy_keV=span(0.01, 1000.0, "log")), hours=24.0, loss_cone="stop"
+    )
     causes = traced(run, 1e-7).end["cause"]
     assert set(np.unique(causes)) == {Cause.DRIFTING, Cause.OUTER, Cause.ATMOSPHERE}

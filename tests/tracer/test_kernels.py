@@ -19,8 +19,8 @@ from tolerances import bound
 
 import tracer
 from fields import arith
-from fields.compose import Field, compose
 from fields.contract import Term
+from fields.field import Field, compose
 from fields.magnetic.mirror_ratio import cot2_and_slope
 from tracer.integrate import prepare
 from tracer.kernels import arith as compiled_arith

@@ -94,7 +94,9 @@ def test_two_files_of_one_run_hold_the_same_datasets(tmp_path: Path) -> None:
     for name in ("a.h5", "b.h5"):
         with h5py.File(tmp_path / name) as file:
             bits: dict[str, bytes] = {}
-            file.visititems(lambda n, item, b=bits: b.update({n: item[...].tobytes()}) if isinstance(item, h5py.Dataset) else None)
+            file.visititems(
+                lambda n, item, b=bits: b.update({n: item[...].tobytes()}) if isinstance(item, h5py.Dataset) else None
+            )
             found.append(bits)
     assert len(found[0]) >= 25
     assert found[0] == found[1]
@@ -149,7 +151,7 @@ def test_attributes_in_memory_and_in_a_file(whole: Result, tmp_path: Path) -> No
     assert whole.attrs["start"] == "2027-03-04T00:00:00Z"
     assert whole.attrs["end_error_99_re"] <= RUN.output.tolerance_re
     assert whole.attrs["end_error_sample"] == RUN.count
-    assert records.CAUTION == whole.attrs["caution"]
+    assert whole.attrs["caution"] == records.CAUTION
 
 
 def test_to_xarray(whole: Result) -> None:

@@ -17,7 +17,9 @@ HEAVY = {"numba", "scipy", "matplotlib", "xarray", "pydantic", "h5py", "rich", "
 def processor_s(*arguments: str, folder: Path) -> float:
     """Processor time of one call of the command: what others do on the machine does not count."""
     command = [sys.executable, "-m", "tracer", *arguments]
-    child = subprocess.Popen(command, cwd=folder, stdout=subprocess.DEVNULL, env={**os.environ, "PYTHONPATH": str(ROOT)})
+    child = subprocess.Popen(
+        command, cwd=folder, stdout=subprocess.DEVNULL, env={**os.environ, "PYTHONPATH": str(ROOT)}
+    )
     _, status, used = os.wait4(child.pid, 0)
     child.returncode = os.waitstatus_to_exitcode(status)
     assert child.returncode == 0
@@ -42,7 +44,9 @@ def test_a_second_trace_of_a_small_run_takes_less_than_three_seconds(tmp_path: P
     assert best < 3.0
 
 
-@pytest.mark.parametrize("arguments", [["--help"], ["--version"], ["trace", "--help"], ["new", "storm.toml"], ["models"]])
+@pytest.mark.parametrize(
+    "arguments", [["--help"], ["--version"], ["trace", "--help"], ["new", "storm.toml"], ["models"]]
+)
 def test_what_needs_no_particles_loads_nothing_heavy(arguments: list[str], tmp_path: Path) -> None:
     code = (
         "import json, sys\n"

@@ -38,21 +38,18 @@ def entry_point(function: Function) -> Function:
     return cast(Function, njit(nogil=True, cache=True, **OPTIONS)(function))
 
 
-@intrinsic  # type: ignore[untyped-decorator]
-def prefer_widest_vectors(context):  # type: ignore[no-untyped-def]
-    """Ask LLVM to use the widest registers in the calling function.
-
-    On processors with AVX-512 it keeps to half of their width by default, for fear of a lower clock; a step of all
-    lanes takes 1.7 times as long then.
-    """
-
+def _widest_vectors(context):  # type: ignore[no-untyped-def]
     def generate(context, builder, signature, arguments):  # type: ignore[no-untyped-def]
-        # llvmlite knows only some attributes by name; this one is LLVM's documented string attribute
+        # llvmlite knows only some attributes by name; this is a documented string attribute of LLVM's
         set.add(builder.function.attributes, '"prefer-vector-width"="512"')
         return context.get_dummy_value()
 
     return types.void(), generate
 
+
+# Asks LLVM to use the widest registers in the function that calls it. On processors with AVX-512 it keeps to half of
+# their width by default, for fear of a lower clock; a step of all lanes takes 1.6 times as long then.
+prefer_widest_vectors = cast(Callable[[], None], intrinsic(_widest_vectors))
 
 TWO_PI = 2.0 * math.pi
 INVERSE_TWO_PI = 1.0 / TWO_PI

@@ -27,8 +27,8 @@ from typing import Any
 
 import numpy as np
 
-from fields.compose import Field
 from fields.drivers import Driver
+from fields.field import Field
 from fields.units import Floats
 from tracer.kernels import arith
 from tracer.status import Cause

@@ -6,10 +6,10 @@ from collections.abc import Mapping
 from typing import Any, cast
 
 from fields.catalogue import Kind, find, listing
-from fields.compose import Field, compose
 from fields.contract import Card, ElectricModel, MagneticModel, Model
 from fields.drivers import Driver
 from fields.errors import InputError
+from fields.field import Field, compose
 from fields.series import Series
 from tracer.runfile.faults import Fault, unknown_key
 from tracer.runfile.places import Path, fault, under

@@ -8,8 +8,8 @@ from collections.abc import Sequence
 import numpy as np
 
 from fields import constants
-from fields.compose import Field
 from fields.errors import nearest
+from fields.field import Field
 from fields.units import Floats, phi_from_mlt
 from tracer.runfile.places import Path, fault
 from tracer.runfile.quantities import Rule, cold_fault, quantity

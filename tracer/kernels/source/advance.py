@@ -17,46 +17,11 @@ from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, p
 from .drift import depth_in_cone, motion_at, observed
 from .field import drivers
 from .lanes import (
-    CROSSING,
-    ENDING,
-    ENTERING,
-    accept_all,
-    interpolate_all,
-    observe_row,
-    particle,
-    point_all,
-    step_all,
+    CROSSING, ENDING, ENTERING, accept_all, interpolate_all, observe_row, particle, point_all, step_all,
 )  # fmt: skip
 from .layout import (
-    BM,
-    BT,
-    D0,
-    F0,
-    FLAG,
-    K1,
-    L1,
-    LANES,
-    LIMIT,
-    MU,
-    NEXT,
-    OK,
-    PHI,
-    PN,
-    RN,
-    SIZE,
-    SP,
-    SR,
-    STEP,
-    STOP,
-    TN,
-    TURNS,
-    WATCH,
-    H,
-    K,
-    M,
-    Q,
-    R,
-    T,
+    BM, BT, D0, F0, F15, FLAG, K1, L1, LANES, LIMIT, MU, NEXT, OK, PHI, PN, RN, SIZE, SP, SR, STEP, STOP, TN, TURNS,
+    WATCH, H, K, M, Q, R, T,
 )  # fmt: skip
 
 DRIFTING, FAILED = int(Cause.DRIFTING), int(Cause.FAILED)
@@ -79,12 +44,12 @@ def segment_at(edges: Any, t: Any, sign: Any) -> Any:
 def enter_segment(W: Any, lane: Any, seg: Any, C: Any, edges: Any, segments: Any, t_end: Any, sign: Any) -> None:
     """Give `lane` the drivers of a segment, its end, and the slopes there."""
     for i in range(segments.shape[1]):
-        W[(D0 + i) * LANES + lane] = segments[seg, i]
+        W[D0 + i * LANES + lane] = segments[seg, i]
     limit = edges[seg + 1] if sign > 0.0 else edges[seg]
-    W[LIMIT * LANES + lane] = limit if sign * (t_end - limit) > 0.0 else t_end
-    t, r, phi = W[T * LANES + lane], W[R * LANES + lane], W[PHI * LANES + lane]
-    k1, l1, bm, bt = motion_at(t, r, phi, particle(W, lane), C, drivers(W, D0 * LANES + lane, LANES))
-    W[K1 * LANES + lane], W[L1 * LANES + lane], W[BM * LANES + lane], W[BT * LANES + lane] = k1, l1, bm, bt
+    W[LIMIT + lane] = limit if sign * (t_end - limit) > 0.0 else t_end
+    t, r, phi = W[T + lane], W[R + lane], W[PHI + lane]
+    k1, l1, bm, bt = motion_at(t, r, phi, particle(W, lane), C, drivers(W, D0 + lane, LANES))
+    W[K1 + lane], W[L1 + lane], W[BM + lane], W[BT + lane] = k1, l1, bm, bt
 
 
 @compiled
@@ -95,8 +60,8 @@ def release(
     saved time."""
     t_end, sign, outer, inner, foot_re, cone, tolerance = rules
     r, phi, t = P[i, 0], P[i, 1], P[i, 2]
-    W[R * LANES + lane], W[PHI * LANES + lane], W[T * LANES + lane], W[TURNS * LANES + lane] = r, phi, t, 0.0
-    W[MU * LANES + lane], W[K * LANES + lane], W[Q * LANES + lane], W[M * LANES + lane] = (
+    W[R + lane], W[PHI + lane], W[T + lane], W[TURNS + lane] = r, phi, t, 0.0
+    W[MU + lane], W[K + lane], W[Q + lane], W[M + lane] = (
         P[i, 3],
         P[i, 4],
         P[i, 5],
@@ -104,22 +69,22 @@ def release(
     )
     seg = segment_at(edges, t, sign)
     enter_segment(W, lane, seg, C, edges, segments, t_end, sign)
-    k1 = W[K1 * LANES + lane]
-    W[H * LANES + lane] = initial_step(k1, W[L1 * LANES + lane], tolerance)
+    k1 = W[K1 + lane]
+    W[H + lane] = initial_step(k1, W[L1 + lane], tolerance)
     end[i, ACCEPTED], end[i, REJECTED] = 0.0, 0.0
     j = np.searchsorted(sign * times, sign * t)
     if j < times.size and times[j] == t:
         track[0, i, j], track[1, i, j] = r, phi
         j += 1
-    W[NEXT * LANES + lane] = times[j] if j < times.size else sign * EVER
+    W[NEXT + lane] = times[j] if j < times.size else sign * EVER
     cause = DRIFTING
-    W[WATCH * LANES + lane] = 0.0
+    W[WATCH + lane] = 0.0
     if cone != CONE_OFF:
         if depth_in_cone(r, phi, particle(W, lane), foot_re, C) >= 0.0:
             end[i, CONE_TIME] = t
             cause = CONE if cone == CONE_STOP else cause
         else:
-            W[WATCH * LANES + lane] = 1.0
+            W[WATCH + lane] = 1.0
     if r > outer or (r == outer and sign * k1 > 0.0):
         cause = OUTER
     if r < inner or (r == inner and sign * k1 < 0.0):
@@ -132,11 +97,11 @@ def meet(W: Any, lane: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
     """What the particle in `lane` met within its accepted step: DRIFTING, or the cause of its end, which is then
     the step's end."""
     _, _, outer, inner, foot_re, cone, _ = rules
-    flag = int(W[FLAG * LANES + lane])
-    F = W[F0 * LANES + lane : (F0 + 16) * LANES + lane : LANES]
-    p, D = particle(W, lane), drivers(W, D0 * LANES + lane, LANES)
-    t, r, phi, h = W[T * LANES + lane], W[R * LANES + lane], W[PHI * LANES + lane], W[STEP * LANES + lane]
-    k1, l1 = W[K1 * LANES + lane], W[L1 * LANES + lane]
+    flag = int(W[FLAG + lane])
+    F = W[F0 + lane : F15 + lane + 1 : LANES]
+    p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
+    t, r, phi, h = W[T + lane], W[R + lane], W[PHI + lane], W[STEP + lane]
+    k1, l1 = W[K1 + lane], W[L1 + lane]
     x, which, cone_x = NEVER, DRIFTING, NEVER
     if flag & int(CROSSING):
         x, which = first_crossing(OUTER, F, outer, inner, foot_re, p, C), OUTER
@@ -148,7 +113,7 @@ def meet(W: Any, lane: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
     if cone_x < NEVER and cone_x <= x:
         at, re, pe = polished(CONE, cone_x, t, r, phi, h, k1, l1, outer, inner, foot_re, p, C, D)
         end[i, CONE_TIME] = t + at
-        W[WATCH * LANES + lane] = 0.0
+        W[WATCH + lane] = 0.0
         if cone == CONE_STOP:
             return end_step(W, lane, CONE, t + at, re, pe)
     if x >= NEVER:
@@ -161,18 +126,18 @@ def meet(W: Any, lane: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
 def end_step(W: Any, lane: Any, cause: Any, t: Any, r: Any, phi: Any) -> Any:
     """Let the step of `lane` end early; returns `cause`."""
     # saved times come from the interpolant up to here; none of them is this end itself
-    W[STOP * LANES + lane] = t
-    W[TN * LANES + lane], W[RN * LANES + lane], W[PN * LANES + lane] = t, r, phi
+    W[STOP + lane] = t
+    W[TN + lane], W[RN + lane], W[PN + lane] = t, r, phi
     return cause
 
 
 @compiled
 def conclude(W: Any, lane: Any, P: Any, C: Any, cause: Any, end: Any, i: Any) -> None:
     """Write the end of particle `i` in `lane`."""
-    r, phi = W[R * LANES + lane], W[PHI * LANES + lane]
-    end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T * LANES + lane], r, cause
+    r, phi = W[R + lane], W[PHI + lane]
+    end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T + lane], r, cause
     end[i, END_MLT], end[i, END_ENERGY], end[i, END_PITCH] = observed(r, phi, particle(W, lane), C)
-    end[i, TURNED] = W[TURNS * LANES + lane] + (phi - P[i, 1]) / TWO_PI
+    end[i, TURNED] = W[TURNS + lane] + (phi - P[i, 1]) / TWO_PI
 
 
 @compiled
@@ -183,21 +148,21 @@ def save_all(W: Any, owner: Any, following: Any, sign: Any, times: Any, track: A
         point_all(W)
         waiting = False
         for lane in range(LANES):
-            if owner[lane] >= 0 and sign * (W[STOP * LANES + lane] - W[NEXT * LANES + lane]) >= 0.0:
+            if owner[lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
                 i, j = owner[lane], following[lane]
-                track[0, i, j], track[1, i, j] = W[SR * LANES + lane], W[SP * LANES + lane]
+                track[0, i, j], track[1, i, j] = W[SR + lane], W[SP + lane]
                 following[lane] = j + 1
-                W[NEXT * LANES + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
+                W[NEXT + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
                 waiting = True
 
 
 @compiled
 def rest(W: Any, lane: Any) -> None:
     """Fill an idle lane with a particle that stands still at a safe place."""
-    for row in range(SIZE // LANES):
-        W[row * LANES + lane] = 0.0
-    W[R * LANES + lane], W[H * LANES + lane], W[Q * LANES + lane] = 5.0, 1e-3, 1.0
-    W[LIMIT * LANES + lane], W[NEXT * LANES + lane] = EVER, EVER
+    for row in range(0, SIZE, LANES):
+        W[row + lane] = 0.0
+    W[R + lane], W[H + lane], W[Q + lane] = 5.0, 1e-3, 1.0
+    W[LIMIT + lane], W[NEXT + lane] = EVER, EVER
 
 
 @entry_point
@@ -238,7 +203,7 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
                     cause[lane], seg[lane], following[lane] = release(
                         W, lane, P, C, edges, segments, rules, times, end, track, i
                     )
-                    if cause[lane] != DRIFTING or W[T * LANES + lane] == t_end:
+                    if cause[lane] != DRIFTING or W[T + lane] == t_end:
                         conclude(W, lane, P, C, cause[lane], end, i)
                     else:
                         owner[lane] = i
@@ -251,14 +216,14 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
         saving, meeting = False, False
         for lane in range(LANES):
             if owner[lane] < 0:
-                W[OK * LANES + lane] = 0.0
+                W[OK + lane] = 0.0
                 continue
-            saving = saving or sign * (W[STOP * LANES + lane] - W[NEXT * LANES + lane]) >= 0.0
-            meeting = meeting or W[FLAG * LANES + lane] > ENDING
+            saving = saving or sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0
+            meeting = meeting or W[FLAG + lane] > ENDING
         if saving or meeting:
             interpolate_all(W, C)
             for lane in range(LANES):
-                if owner[lane] >= 0 and W[FLAG * LANES + lane] > ENDING:
+                if owner[lane] >= 0 and W[FLAG + lane] > ENDING:
                     cause[lane] = meet(W, lane, C, rules, end, owner[lane])
             if saving:
                 save_all(W, owner, following, sign, times, track)
@@ -267,16 +232,16 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
             i = owner[lane]
             if i < 0:
                 continue
-            good = W[OK * LANES + lane] > 0.0
+            good = W[OK + lane] > 0.0
             end[i, ACCEPTED if good else REJECTED] += 1.0
-            if not good and (W[H * LANES + lane] < LEAST_STEP or end[i, ACCEPTED] + end[i, REJECTED] > MOST_STEPS):
+            if not good and (W[H + lane] < LEAST_STEP or end[i, ACCEPTED] + end[i, REJECTED] > MOST_STEPS):
                 cause[lane] = FAILED
-            if cause[lane] != DRIFTING or (good and W[T * LANES + lane] == t_end):
+            if cause[lane] != DRIFTING or (good and W[T + lane] == t_end):
                 conclude(W, lane, P, C, cause[lane], end, i)
                 owner[lane] = -1
                 busy -= 1
                 refill = True
-            elif good and W[T * LANES + lane] == W[LIMIT * LANES + lane]:
+            elif good and W[T + lane] == W[LIMIT + lane]:
                 seg[lane] += 1 if sign > 0.0 else -1
                 enter_segment(W, lane, seg[lane], C, edges, segments, t_end, sign)
     if times.size > 0:

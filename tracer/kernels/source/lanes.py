@@ -14,42 +14,9 @@ from tracer.kernels.arith import TWO_PI, inlined, prefer_widest_vectors, rough_p
 from .drift import motion_and_foot, observed
 from .field import drivers
 from .layout import (
-    BM,
-    BMN,
-    BT,
-    BTN,
-    D0,
-    F0,
-    F8,
-    FLAG,
-    HN,
-    K1,
-    K6,
-    KN,
-    L1,
-    L6,
-    LANES,
-    LIMIT,
-    LN,
-    MU,
-    NEXT,
-    OK,
-    PHI,
-    PN,
-    RN,
-    SP,
-    SR,
-    STEP,
-    STOP,
-    TN,
-    TURNS,
-    WATCH,
-    H,
-    K,
-    M,
-    Q,
-    R,
-    T,
+    BM, BMN, BT, BTN, D0, F0, F1, F2, F3, F4, F5, F6, F7, F8, F9, F10, F11, F12, F13, F14, F15, FLAG, HN, K1, K6,
+    K7, K8, K9, K10, K11, K12, KN, L1, L6, L7, L8, L9, L10, L11, L12, LANES, LIMIT, LN, MU, NEXT, OK, PHI, PN, RN,
+    SP, SR, STEP, STOP, TN, TURNS, WATCH, H, K, M, Q, R, T,
 )  # fmt: skip
 from .step import along, interpolant, trial
 
@@ -62,17 +29,17 @@ ENDING, CROSSING, ENTERING = 1.0, 2.0, 4.0  # bits of FLAG
 @inlined
 def particle(W: Any, lane: Any) -> Any:
     """What rides in `lane`."""
-    return W[MU * LANES + lane], W[K * LANES + lane], W[Q * LANES + lane], W[M * LANES + lane]
+    return W[MU + lane], W[K + lane], W[Q + lane], W[M + lane]
 
 
 @inlined
 def stages_of(W: Any, lane: Any) -> Any:
     """The stages that `step_all` kept."""
     return (
-        W[K6 * LANES + lane], W[(K6 + 1) * LANES + lane], W[(K6 + 2) * LANES + lane], W[(K6 + 3) * LANES + lane],
-        W[(K6 + 4) * LANES + lane], W[(K6 + 5) * LANES + lane], W[(K6 + 6) * LANES + lane],
-        W[L6 * LANES + lane], W[(L6 + 1) * LANES + lane], W[(L6 + 2) * LANES + lane], W[(L6 + 3) * LANES + lane],
-        W[(L6 + 4) * LANES + lane], W[(L6 + 5) * LANES + lane], W[(L6 + 6) * LANES + lane],
+        W[K6 + lane], W[K7 + lane], W[K8 + lane], W[K9 + lane],
+        W[K10 + lane], W[K11 + lane], W[K12 + lane],
+        W[L6 + lane], W[L7 + lane], W[L8 + lane], W[L9 + lane],
+        W[L10 + lane], W[L11 + lane], W[L12 + lane],
     )  # fmt: skip
 
 
@@ -81,10 +48,10 @@ def step_all(W: Any, C: Any, sign: Any, inverse_tolerance: Any, outer: Any, inne
     """Try a step in every lane; note what calls for scalar code."""
     prefer_widest_vectors()
     for lane in range(LANES):
-        r, phi, t, h = W[R * LANES + lane], W[PHI * LANES + lane], W[T * LANES + lane], W[H * LANES + lane]
-        k1, l1 = W[K1 * LANES + lane], W[L1 * LANES + lane]
-        p, D = particle(W, lane), drivers(W, D0 * LANES + lane, LANES)
-        limit = W[LIMIT * LANES + lane]
+        r, phi, t, h = W[R + lane], W[PHI + lane], W[T + lane], W[H + lane]
+        k1, l1 = W[K1 + lane], W[L1 + lane]
+        p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
+        limit = W[LIMIT + lane]
         left = sign * (limit - t)
         # two even steps rather than a long one and a sliver
         whole = h >= left
@@ -105,31 +72,31 @@ def step_all(W: Any, C: Any, sign: Any, inverse_tolerance: Any, outer: Any, inne
         # half the step at the larger speed bounds what the path strays from its ends
         stray = 0.5 * abs(step) * max(abs(k1), abs(kn))
         crossing = (max(r, rn) + stray >= outer) or (min(r, rn) - stray <= inner)
-        rise = abs(step) * max(abs(W[BT * LANES + lane]), abs(bt))
-        near = max(W[BM * LANES + lane], bm) + rise >= NEAR_CONE * b_foot
-        entering = near and W[WATCH * LANES + lane] > 0.0
+        rise = abs(step) * max(abs(W[BT + lane]), abs(bt))
+        near = max(W[BM + lane], bm) + rise >= NEAR_CONE * b_foot
+        entering = near and W[WATCH + lane] > 0.0
         flag = (ENDING if whole else 0.0) + (CROSSING if crossing else 0.0) + (ENTERING if entering else 0.0)
-        W[STEP * LANES + lane], W[TN * LANES + lane] = step, tn
-        W[RN * LANES + lane], W[PN * LANES + lane], W[KN * LANES + lane], W[LN * LANES + lane] = rn, pn, kn, ln
-        W[BMN * LANES + lane], W[BTN * LANES + lane] = bm, bt
-        W[OK * LANES + lane], W[HN * LANES + lane] = (1.0 if ok else 0.0), hn
-        W[FLAG * LANES + lane] = flag if ok else 0.0
-        W[STOP * LANES + lane] = tn if ok else t - step
+        W[STEP + lane], W[TN + lane] = step, tn
+        W[RN + lane], W[PN + lane], W[KN + lane], W[LN + lane] = rn, pn, kn, ln
+        W[BMN + lane], W[BTN + lane] = bm, bt
+        W[OK + lane], W[HN + lane] = (1.0 if ok else 0.0), hn
+        W[FLAG + lane] = flag if ok else 0.0
+        W[STOP + lane] = tn if ok else t - step
         k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
-        W[K6 * LANES + lane] = k6
-        W[(K6 + 1) * LANES + lane] = k7
-        W[(K6 + 2) * LANES + lane] = k8
-        W[(K6 + 3) * LANES + lane] = k9
-        W[(K6 + 4) * LANES + lane] = k10
-        W[(K6 + 5) * LANES + lane] = k11
-        W[(K6 + 6) * LANES + lane] = k12
-        W[L6 * LANES + lane] = l6
-        W[(L6 + 1) * LANES + lane] = l7
-        W[(L6 + 2) * LANES + lane] = l8
-        W[(L6 + 3) * LANES + lane] = l9
-        W[(L6 + 4) * LANES + lane] = l10
-        W[(L6 + 5) * LANES + lane] = l11
-        W[(L6 + 6) * LANES + lane] = l12
+        W[K6 + lane] = k6
+        W[K7 + lane] = k7
+        W[K8 + lane] = k8
+        W[K9 + lane] = k9
+        W[K10 + lane] = k10
+        W[K11 + lane] = k11
+        W[K12 + lane] = k12
+        W[L6 + lane] = l6
+        W[L7 + lane] = l7
+        W[L8 + lane] = l8
+        W[L9 + lane] = l9
+        W[L10 + lane] = l10
+        W[L11 + lane] = l11
+        W[L12 + lane] = l12
 
 
 @inlined
@@ -138,26 +105,26 @@ def interpolate_all(W: Any, C: Any) -> None:
     prefer_widest_vectors()
     for lane in range(LANES):
         f = interpolant(
-            W[T * LANES + lane], W[R * LANES + lane], W[PHI * LANES + lane], W[STEP * LANES + lane], W[RN * LANES + lane],
-            W[PN * LANES + lane], W[K1 * LANES + lane], W[L1 * LANES + lane], W[KN * LANES + lane], W[LN * LANES + lane],
-            stages_of(W, lane), particle(W, lane), C, drivers(W, D0 * LANES + lane, LANES),
+            W[T + lane], W[R + lane], W[PHI + lane], W[STEP + lane], W[RN + lane],
+            W[PN + lane], W[K1 + lane], W[L1 + lane], W[KN + lane], W[LN + lane],
+            stages_of(W, lane), particle(W, lane), C, drivers(W, D0 + lane, LANES),
         )  # fmt: skip
-        W[F0 * LANES + lane] = f[0]
-        W[(F0 + 1) * LANES + lane] = f[1]
-        W[(F0 + 2) * LANES + lane] = f[2]
-        W[(F0 + 3) * LANES + lane] = f[3]
-        W[(F0 + 4) * LANES + lane] = f[4]
-        W[(F0 + 5) * LANES + lane] = f[5]
-        W[(F0 + 6) * LANES + lane] = f[6]
-        W[(F0 + 7) * LANES + lane] = f[7]
-        W[(F0 + 8) * LANES + lane] = f[8]
-        W[(F0 + 9) * LANES + lane] = f[9]
-        W[(F0 + 10) * LANES + lane] = f[10]
-        W[(F0 + 11) * LANES + lane] = f[11]
-        W[(F0 + 12) * LANES + lane] = f[12]
-        W[(F0 + 13) * LANES + lane] = f[13]
-        W[(F0 + 14) * LANES + lane] = f[14]
-        W[(F0 + 15) * LANES + lane] = f[15]
+        W[F0 + lane] = f[0]
+        W[F1 + lane] = f[1]
+        W[F2 + lane] = f[2]
+        W[F3 + lane] = f[3]
+        W[F4 + lane] = f[4]
+        W[F5 + lane] = f[5]
+        W[F6 + lane] = f[6]
+        W[F7 + lane] = f[7]
+        W[F8 + lane] = f[8]
+        W[F9 + lane] = f[9]
+        W[F10 + lane] = f[10]
+        W[F11 + lane] = f[11]
+        W[F12 + lane] = f[12]
+        W[F13 + lane] = f[13]
+        W[F14 + lane] = f[14]
+        W[F15 + lane] = f[15]
 
 
 @inlined
@@ -165,18 +132,18 @@ def point_all(W: Any) -> None:
     """Every lane's point at its next time to save; where that is the step's end, the end itself."""
     prefer_widest_vectors()
     for lane in range(LANES):
-        x = (W[NEXT * LANES + lane] - W[T * LANES + lane]) / W[STEP * LANES + lane]
-        ending = W[NEXT * LANES + lane] == W[TN * LANES + lane]
+        x = (W[NEXT + lane] - W[T + lane]) / W[STEP + lane]
+        ending = W[NEXT + lane] == W[TN + lane]
         r = along(
-            W[F0 * LANES + lane], W[(F0 + 1) * LANES + lane], W[(F0 + 2) * LANES + lane], W[(F0 + 3) * LANES + lane],
-            W[(F0 + 4) * LANES + lane], W[(F0 + 5) * LANES + lane], W[(F0 + 6) * LANES + lane], W[(F0 + 7) * LANES + lane], x,
+            W[F0 + lane], W[F1 + lane], W[F2 + lane], W[F3 + lane],
+            W[F4 + lane], W[F5 + lane], W[F6 + lane], W[F7 + lane], x,
         )  # fmt: skip
         phi = along(
-            W[F8 * LANES + lane], W[(F8 + 1) * LANES + lane], W[(F8 + 2) * LANES + lane], W[(F8 + 3) * LANES + lane],
-            W[(F8 + 4) * LANES + lane], W[(F8 + 5) * LANES + lane], W[(F8 + 6) * LANES + lane], W[(F8 + 7) * LANES + lane], x,
+            W[F8 + lane], W[F9 + lane], W[F10 + lane], W[F11 + lane],
+            W[F12 + lane], W[F13 + lane], W[F14 + lane], W[F15 + lane], x,
         )  # fmt: skip
-        W[SR * LANES + lane] = W[RN * LANES + lane] if ending else r
-        W[SP * LANES + lane] = W[PN * LANES + lane] if ending else phi
+        W[SR + lane] = W[RN + lane] if ending else r
+        W[SP + lane] = W[PN + lane] if ending else phi
 
 
 @inlined
@@ -184,18 +151,18 @@ def accept_all(W: Any) -> None:
     """Move every lane whose step was accepted; keep the angle within half a turn."""
     prefer_widest_vectors()
     for lane in range(LANES):
-        ok = W[OK * LANES + lane] > 0.0
-        phi = W[PN * LANES + lane] if ok else W[PHI * LANES + lane]
+        ok = W[OK + lane] > 0.0
+        phi = W[PN + lane] if ok else W[PHI + lane]
         turn = 1.0 if phi > np.pi else (-1.0 if phi < -np.pi else 0.0)
-        W[PHI * LANES + lane] = phi - TWO_PI * turn
-        W[TURNS * LANES + lane] = W[TURNS * LANES + lane] + turn
-        W[R * LANES + lane] = W[RN * LANES + lane] if ok else W[R * LANES + lane]
-        W[T * LANES + lane] = W[TN * LANES + lane] if ok else W[T * LANES + lane]
-        W[K1 * LANES + lane] = W[KN * LANES + lane] if ok else W[K1 * LANES + lane]
-        W[L1 * LANES + lane] = W[LN * LANES + lane] if ok else W[L1 * LANES + lane]
-        W[BM * LANES + lane] = W[BMN * LANES + lane] if ok else W[BM * LANES + lane]
-        W[BT * LANES + lane] = W[BTN * LANES + lane] if ok else W[BT * LANES + lane]
-        W[H * LANES + lane] = W[HN * LANES + lane]
+        W[PHI + lane] = phi - TWO_PI * turn
+        W[TURNS + lane] = W[TURNS + lane] + turn
+        W[R + lane] = W[RN + lane] if ok else W[R + lane]
+        W[T + lane] = W[TN + lane] if ok else W[T + lane]
+        W[K1 + lane] = W[KN + lane] if ok else W[K1 + lane]
+        W[L1 + lane] = W[LN + lane] if ok else W[L1 + lane]
+        W[BM + lane] = W[BMN + lane] if ok else W[BM + lane]
+        W[BT + lane] = W[BTN + lane] if ok else W[BT + lane]
+        W[H + lane] = W[HN + lane]
 
 
 @inlined

@@ -1,14 +1,14 @@
 """The work array: one row for each quantity, one column for each lane, flat, so that no two rows can alias.
 
-``W[row * LANES + lane]``. The rows of the drivers come last: the start of the segment, then value there and slope
-of each.
+``W[R + lane]``: the names are the offsets of the rows. The rows of the drivers come last: the start of the segment,
+then value there and slope of each.
 """
 
 from __future__ import annotations
 
 from .field import DRIVERS
 
-LANES = 8
+LANES = 8  # as many as doubles in the widest vector register
 
 (
     R, PHI, T, H, K1, L1, TURNS,  # the particle: place, time, next step, slopes, whole turns
@@ -18,10 +18,9 @@ LANES = 8
     STEP, TN, RN, PN, KN, LN, BMN, BTN, OK, HN, FLAG,  # the trial
     K6, K7, K8, K9, K10, K11, K12,  # stages that the interpolant needs
     L6, L7, L8, L9, L10, L11, L12,
-    F0,  # the interpolant: 8 rows for r, 8 for phi
-) = range(42)  # fmt: skip
-F8 = F0 + 8
-STOP, SR, SP = F0 + 16, F0 + 17, F0 + 18  # up to where to save, and a saved point
-D0 = F0 + 19
-ROWS = D0 + 1 + 2 * DRIVERS
-SIZE = ROWS * LANES
+    F0, F1, F2, F3, F4, F5, F6, F7,  # the interpolant of r
+    F8, F9, F10, F11, F12, F13, F14, F15,  # and of phi
+    STOP, SR, SP,  # up to where to save, and a saved point
+    D0,  # the first of the drivers
+) = range(0, 61 * LANES, LANES)  # fmt: skip
+SIZE = D0 + (1 + 2 * DRIVERS) * LANES

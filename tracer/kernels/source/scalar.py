@@ -9,23 +9,8 @@ import numpy as np
 from tracer.kernels.arith import TWO_PI, compiled, entry_point, rough_power
 
 from .advance import (
-    ACCEPTED,
-    CAUSE,
-    CONE_OFF,
-    CONE_STOP,
-    CONE_TIME,
-    DRIFTING,
-    END_ENERGY,
-    END_MLT,
-    END_PITCH,
-    END_R,
-    FAILED,
-    LEAST_STEP,
-    MOST_STEPS,
-    REJECTED,
-    TIME,
-    TURNED,
-    segment_at,
+    ACCEPTED, CAUSE, CONE_OFF, CONE_STOP, CONE_TIME, DRIFTING, END_ENERGY, END_MLT, END_PITCH, END_R, FAILED,
+    LEAST_STEP, MOST_STEPS, REJECTED, TIME, TURNED, segment_at,
 )  # fmt: skip
 from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, polished
 from .drift import depth_in_cone, motion_at, observed
