@@ -1,6 +1,7 @@
 """Runs that share one compiled kernel: a dipole, corotation, and convection by a Kp that varies in time. All invented.
 
-And the same motion by scipy: the compiled right-hand side, which has tests of its own, under an integrator that is not ours.
+And the same motion by scipy: the compiled right-hand side, which has tests of its own, under an integrator that is not
+ours.
 """
 
 from __future__ import annotations
@@ -66,9 +67,15 @@ def particle(row: np.ndarray) -> tuple[float, float, float, float]:
 Excess = Callable[[Any, Any], Any]  # of r and phi, elementwise
 
 
+def drivers_at(kernel: Kernel, time_h: float) -> tuple[float, ...]:
+    """Start, value and slope of the drivers in the segment that holds a time."""
+    i = int(np.searchsorted(kernel.edges, time_h, side="right")) - 1
+    return tuple(map(float, kernel.segments[min(max(i, 0), len(kernel.segments) - 1)]))
+
+
 @dataclass(frozen=True)
 class Path:
-    """Where one particle goes, by scipy: pieces of dense output between the corners of the drivers, in order of tracing."""
+    """Where one particle goes, by scipy: pieces of dense output between corners of the drivers, in order of tracing."""
 
     pieces: tuple[OdeSolution, ...]
 
@@ -89,7 +96,7 @@ class Path:
         return np.interp(np.arange(5 * (steps.size - 1) + 1) / 5, np.arange(steps.size), steps)
 
     def first(self, excess: Excess, until: float | None = None) -> float:
-        """The first time at which the excess turns positive; NaN if it does not. `until` is a time known to lie beyond."""
+        """The first time at which the excess turns positive, NaN if it does not; `until` is known to lie beyond."""
         nodes = self.nodes
         if until is not None:
             nodes = np.append(nodes[np.abs(nodes) < abs(until)], until)
@@ -124,14 +131,14 @@ far.terminal = True  # type: ignore[attr-defined]
 
 def path_by_scipy(run: Scenario, kernel: Kernel, row: np.ndarray) -> Path:
     """The path from release to the end of the run, through any boundary, or until it is far beyond all of them."""
-    slope, p = part(kernel, "drift").slope, particle(row)
+    slope, p = part(kernel, "drift").slope_at, particle(row)
     t, state = float(row[2]), row[:2].copy()
     inner = kernel.edges[(kernel.edges - t) * run.direction > 0]
     corners = [c for c in inner[:: int(run.direction)] if (run.end_h - c) * run.direction > 0]
     pieces = []
     for corner in (*corners, run.end_h):
         middle = 0.5 * (t + corner)
-        D = kernel.segments[int(np.searchsorted(kernel.edges, middle)) - 1]
+        D = drivers_at(kernel, middle)
         done = solve_ivp(
             lambda t, y, D=D: slope(t, y[0], y[1], p, kernel.constants, D),
             (t, corner), state, "DOP853", rtol=STRICT, atol=STRICT, dense_output=True,

@@ -45,6 +45,7 @@ BREACHES = [
     ("tracer/cli.py", "import rich", "rich only in tracer.terminal"),
     ("tracer/scenario.py", "from pydantic import BaseModel", "pydantic only in tracer.runfile"),
     ("tracer/records.py", "import xarray", "xarray only in tracer.labelled"),
+    ("tracer/pipeline.py", "from dask.distributed import Client", "dask only in tracer.cluster"),
 ]
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import signal
 import sys
 from collections.abc import Sequence
@@ -46,7 +47,7 @@ def models(name: str | None, as_json: bool) -> None:
     from tracer.listing import described, text
 
     found = described(name)
-    click.echo(json.dumps(found, indent=2) if as_json else text(found, whole=name is not None))
+    click.echo(_json(found) if as_json else text(found, whole=name is not None))
 
 
 @command.command()
@@ -59,7 +60,7 @@ def check(run: str, as_json: bool) -> None:
     from tracer.tables import preview_text
 
     found = preview(load(run))
-    click.echo(json.dumps(found, indent=2) if as_json else preview_text(found))
+    click.echo(_json(found) if as_json else preview_text(found))
 
 
 @command.command()
@@ -83,7 +84,7 @@ def trace(run: str, output: str | None, overwrite: bool, threads: int | None, qu
         click.echo(f"{PREFIX}: warning: {warning}", err=True)
     result = trace_run(scenario, out, overwrite=overwrite, threads=threads, watcher=watcher(quiet))
     if as_json:
-        click.echo(json.dumps({"file": out, **closing(result)}, indent=2))
+        click.echo(_json({"file": out, **closing(result)}))
     elif not quiet:
         click.echo(closing_text(result))
         click.echo("")
@@ -108,6 +109,7 @@ def draw(file: str, directory: str, format_: str, overwrite: bool) -> None:
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run the command and return its exit status: 0 done, 1 internal failure, 2 bad input, 3 stopped early."""
     previous = _stop_on_terminate()
+    stdout = sys.stdout
     try:
         command.main(args=None if arguments is None else list(arguments), prog_name=PREFIX, standalone_mode=False)
         return DONE
@@ -125,9 +127,10 @@ def main(arguments: Sequence[str] | None = None) -> int:
         return error.exit_code
     except click.exceptions.Exit as error:
         return error.exit_code
-    except BrokenPipeError:
-        _close_stdout()
-        return DONE
+    except SystemExit:
+        if sys.stdout is not stdout:  # click wraps it, and leaves, when the reader of a pipe has gone
+            return DONE
+        raise
     except Exception as error:  # the one place that may not leak a fault as anything but status 1
         _explain(error)
         return INTERNAL
@@ -148,11 +151,17 @@ def _stop_on_terminate() -> Any:
         return None
 
 
-def _close_stdout() -> None:
-    """After the reader of a pipe has gone, keep the interpreter from writing to it once more."""
-    import os
+def _json(found: dict[str, Any]) -> str:
+    """One JSON object; a number that is not finite, which JSON cannot hold, becomes null."""
 
-    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    def finite(value: Any) -> Any:
+        if isinstance(value, dict):
+            return {key: finite(member) for key, member in value.items()}
+        if isinstance(value, (list, tuple)):
+            return [finite(member) for member in value]
+        return None if isinstance(value, float) and not math.isfinite(value) else value
+
+    return json.dumps(finite(found), indent=2, allow_nan=False)
 
 
 def _explain(error: Exception) -> None:

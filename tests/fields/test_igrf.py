@@ -13,8 +13,10 @@ from fields.magnetic.igrf import COEFFICIENTS, EPOCHS, dipole_field_nT
 
 
 def published() -> dict[float, tuple[float, float, float]]:
-    """(g10, g11, h11) by epoch from IGRF14.shc, the coefficients of IAGA Working Group V-MOD (doi:10.5281/zenodo.14012302):
-    a data file of the `ppigrf` wheel, which is not imported."""
+    """(g10, g11, h11) by epoch from IGRF14.shc, the coefficients of IAGA Working Group V-MOD.
+
+    doi:10.5281/zenodo.14012302; a data file of the `ppigrf` wheel, which is not imported.
+    """
     spec = find_spec("ppigrf")
     assert spec is not None, "the test dependency ppigrf is not installed"
     assert spec.origin

@@ -1,4 +1,4 @@
-"""The whole run: the same bits whatever the threads and the chunks, in memory or in a file, and nothing left after a stop."""
+"""The whole run: the same bits whatever the threads and chunks, in memory or in a file; nothing is left by a stop."""
 
 from __future__ import annotations
 
@@ -137,8 +137,8 @@ def test_result_carries_what_the_run_took(whole: Result) -> None:
 
 
 ATTRS = {
-    "format", "format_version", "driftrose_version", "numba_version", "numpy_version", "scipy_version", "h5py_version", "cpu",
-    "title", "run_file", "input_sha256", "start", "complete", "caution", "local_tolerance_re", "tolerance_re",
+    "format", "format_version", "driftrose_version", "numba_version", "numpy_version", "scipy_version", "h5py_version",
+    "cpu", "title", "run_file", "input_sha256", "start", "complete", "caution", "local_tolerance_re", "tolerance_re",
     "end_error_50_re", "end_error_99_re", "end_error_100_re", "end_error_sample",
 }  # fmt: skip
 

@@ -54,10 +54,9 @@ def test_what_needs_no_particles_loads_nothing_heavy(arguments: list[str], tmp_p
         f"status = main({arguments!r})\n"
         "print(json.dumps([status, sorted({name.partition('.')[0] for name in sys.modules})]))"
     )
-    done = subprocess.run(
-        [sys.executable, "-c", code], cwd=tmp_path, env={**os.environ, "PYTHONPATH": str(ROOT)}, capture_output=True, text=True,
-        check=True,
-    )  # fmt: skip
+    env = {**os.environ, "PYTHONPATH": str(ROOT)}
+    command = [sys.executable, "-c", code]
+    done = subprocess.run(command, cwd=tmp_path, env=env, capture_output=True, text=True, check=True)
     status, loaded = json.loads(done.stdout.splitlines()[-1])
     assert status == 0
     assert "click" in loaded

@@ -10,6 +10,7 @@ versions of numba, llvmlite and numpy, the CPU - because numba's own key sees th
 
 from __future__ import annotations
 
+import atexit
 import hashlib
 import importlib
 import inspect
@@ -142,14 +143,22 @@ def driver_table(drivers: tuple[Driver, ...]) -> tuple[Floats, Floats]:
 
 def cache_root() -> Path:
     """Where kernels are kept: ``DRIFTROSE_CACHE_DIR``, else the user's cache folder, else a temporary one."""
-    named = os.environ.get("DRIFTROSE_CACHE_DIR")
-    base = Path(named) if named else Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache") / "driftrose"
+    named, shared = os.environ.get("DRIFTROSE_CACHE_DIR"), os.environ.get("XDG_CACHE_HOME")
     try:
+        base = Path(named) if named else Path(shared or Path.home() / ".cache") / "driftrose"
         base.mkdir(parents=True, exist_ok=True)
         with tempfile.TemporaryFile(dir=base):
             return base
-    except OSError:
-        return Path(tempfile.mkdtemp(prefix="driftrose-"))
+    except (OSError, RuntimeError):  # cannot be written, or the user has no home
+        return passing_root()
+
+
+@lru_cache(maxsize=1)
+def passing_root() -> Path:
+    """A folder for this process alone, gone when it ends."""
+    folder = tempfile.mkdtemp(prefix="driftrose-")
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    return Path(folder)
 
 
 @lru_cache(maxsize=1)
@@ -161,13 +170,17 @@ def sources_digest() -> str:
     return digest.hexdigest()
 
 
-def kernel_name(text: str, files: tuple[str, ...]) -> str:
-    """Name of the kernel's package: a hash of all that its machine code depends on."""
+def target() -> tuple[str, str]:
+    """Name and features of the processor that kernels are compiled for."""
     from llvmlite.binding import get_host_cpu_features, get_host_cpu_name
 
-    parts = [text, sources_digest(), sys.version, *(version(p) for p in ("numba", "llvmlite", "numpy"))]
-    parts += [os.environ.get("NUMBA_CPU_NAME") or get_host_cpu_name()]
-    parts += [os.environ.get("NUMBA_CPU_FEATURES") or get_host_cpu_features().flatten()]
+    name = os.environ.get("NUMBA_CPU_NAME") or get_host_cpu_name()
+    return name, os.environ.get("NUMBA_CPU_FEATURES") or get_host_cpu_features().flatten()
+
+
+def kernel_name(text: str, files: tuple[str, ...]) -> str:
+    """Name of the kernel's package: a hash of all that its machine code depends on."""
+    parts = [text, sources_digest(), sys.version, *(version(p) for p in ("numba", "llvmlite", "numpy")), *target()]
     digest = hashlib.sha256("\0".join(parts).encode())
     for file in sorted(set(files)):
         digest.update(Path(file).read_bytes() if file else b"")
