@@ -33,6 +33,16 @@ def inverse_cube_root(x: Any) -> Any:
     return 1.0 / np.cbrt(x)
 
 
+def inverse_square_root(x: Any) -> Any:
+    """``x ** (-1/2)`` for positive `x`."""
+    return 1.0 / np.sqrt(x)
+
+
 def square_root(x: Any) -> Any:
-    """``x ** (1/2)`` for `x` >= 0."""
+    """``x ** (1/2)`` for positive `x`."""
     return np.sqrt(x)
+
+
+def reciprocal(x: Any) -> Any:
+    """``1 / x`` for positive `x`."""
+    return 1.0 / x

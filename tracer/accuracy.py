@@ -78,9 +78,9 @@ def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
 
     A sample is traced at two local tolerances. The finer one stands for the truth, the difference is the error of the
     coarser one, and errors go as the local tolerance (the method holds its error per step), so the wanted tolerance
-    follows by proportion. Near a separatrix errors have a long tail; the larger quantile of `PILOT_QUANTILE` keeps its
-    scatter from one sample to the next within the safety factor. Where too many ends differ in their cause to say how
-    far off they are, the sample is traced again, finer.
+    follows by proportion. Near a separatrix errors have a long tail; the larger quantile of `PILOT_QUANTILE` keeps
+    its scatter from one sample to the next within the safety factor. Where too many ends differ in their cause to
+    say how far off they are, the sample is traced again, finer.
     """
     target = scenario.output.tolerance_re
     state = states_of(scenario, sample(scenario, PILOTS, PILOT_SEED))

@@ -16,7 +16,9 @@ from tracer.population import initial_state
 from tracer.records import END, PARTICLE, TRACK, Chunk
 from tracer.scenario import Scenario
 
-BATCH = 256  # particles between two looks at the stop signal: a fraction of a second
+# Particles between two looks at the stop signal: as many as take the time below, which depends on what they are.
+FIRST_BATCH, LARGEST_BATCH = 64, 4096
+BATCH_S = 0.2
 CONE_MODES = {"off": 0, "flag": 1, "stop": 2}
 END_ORDER = ("time_h", "r_re", "mlt_h", "energy_keV", "pitch_deg", "cause", "turns", "loss_cone_h")
 ACCEPTED, REJECTED = 8, 9
@@ -85,7 +87,7 @@ def advance(
     Returns
     -------
     end : ndarray, shape (n, 10)
-    track : ndarray, shape (4, n, n_time)
+    track : ndarray, shape (n, 4, n_time)
 
     Raises
     ------
@@ -103,16 +105,20 @@ def advance(
         tolerance,
     )
     end = np.full((state.shape[0], 10), np.nan)
-    track = np.full((4, state.shape[0], times.size), np.nan)
-    for low in range(0, state.shape[0], BATCH):
+    track = np.full((state.shape[0], 4, times.size), np.nan)
+    low, size = 0, FIRST_BATCH
+    while low < state.shape[0]:
         if stopped is not None and stopped():
             raise Interrupted
-        batch = slice(low, low + BATCH)
+        began = time.perf_counter()
+        batch = slice(low, low + size)
         kernel.module.advance(
-            state[batch], kernel.constants, kernel.edges, kernel.segments, rules, times, end[batch], track[:, batch]
+            state[batch], kernel.constants, kernel.edges, kernel.segments, rules, times, end[batch], track[batch]
         )
         if tick is not None:
             tick(state[batch].shape[0])
+        low += size
+        size = int(np.clip(size * BATCH_S / max(time.perf_counter() - began, 1e-4), FIRST_BATCH, LARGEST_BATCH))
     return end, track
 
 
@@ -130,7 +136,7 @@ def run_chunk(
     prepared = prepare(scenario, first, stop)
     end, track = advance(scenario, kernel, prepared.state, tolerance, scenario.save_times_h, tick, stopped)
     ends = {name: end[:, i].astype(DTYPES["end", name]) for i, name in enumerate(END_ORDER)}
-    tracks = {column.name: track[i] for i, column in enumerate(TRACK)} if scenario.save_times_h.size else {}
+    tracks = {column.name: track[:, i] for i, column in enumerate(TRACK)} if scenario.save_times_h.size else {}
     work = {
         "accepted": float(end[:, ACCEPTED].sum()),
         "rejected": float(end[:, REJECTED].sum()),
@@ -151,6 +157,6 @@ def compile_kernel(scenario: Scenario) -> Kernel:
         rules,
         scenario.save_times_h,
         np.zeros((0, 10)),
-        np.zeros((4, 0, scenario.save_times_h.size)),
+        np.zeros((0, 4, scenario.save_times_h.size)),
     )
     return kernel

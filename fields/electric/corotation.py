@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any, ClassVar
 
-from fields.arith import pointwise
+from fields.arith import pointwise, reciprocal
 from fields.constants import EARTH_RADIUS_M, ROTATION_RAD_PER_H
 from fields.contract import Card, ElectricModel, MagneticModel, Parameter, Term, Varying
 
@@ -13,8 +13,9 @@ from fields.contract import Card, ElectricModel, MagneticModel, Parameter, Term,
 @pointwise
 def corotation(r: Any, sin: Any, cos: Any, amplitude: Any) -> Any:
     """Potential and slopes of ``-C / r``; `amplitude` C in kV."""
-    potential = -amplitude / r
-    return potential, -potential / r, 0.0 * sin
+    inverse = reciprocal(r)
+    potential = -amplitude * inverse
+    return potential, -potential * inverse, 0.0 * sin
 
 
 def corotation_potential_kV(b0_nT: float) -> float:

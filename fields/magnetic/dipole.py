@@ -7,7 +7,7 @@ from typing import Any, ClassVar
 
 import numpy as np
 
-from fields.arith import pointwise, square_root
+from fields.arith import pointwise, reciprocal, square_root
 from fields.contract import Card, LineAverages, MagneticModel, MagneticTerms, Parameter
 from fields.errors import InputError
 from fields.magnetic.dipole_lines import DipoleLines
@@ -19,7 +19,8 @@ from fields.units import Floats
 @pointwise
 def equator(r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) -> Any:
     """B at the equator, nT."""
-    return b0 / (r * r * r)
+    inverse = reciprocal(r)
+    return b0 * (inverse * inverse * inverse)
 
 
 @pointwise
@@ -27,9 +28,10 @@ def mirror(k: Any, r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) ->
     """Mirror field at fixed k, its slopes, and cot^2 of the equatorial pitch angle."""
     kappa = k * inverse_root_b0 * square_root(r)
     cot2, slope = cot2_and_slope(kappa)
-    b = b0 / (r * r * r)
+    inverse = reciprocal(r)
+    b = b0 * (inverse * inverse * inverse)
     # kappa goes as sqrt(r): r d(cot2)/dr = kappa/2 d(cot2)/dkappa
-    return b * (1.0 + cot2), b / r * (0.5 * kappa * slope - 3.0 * (1.0 + cot2)), 0.0 * sin, cot2
+    return b * (1.0 + cot2), b * inverse * (0.5 * kappa * slope - 3.0 * (1.0 + cot2)), 0.0 * sin, cot2
 
 
 @pointwise

@@ -10,27 +10,28 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import compiled, entry_point
+from tracer.kernels.arith import TWO_PI, compiled, entry_point
 from tracer.status import Cause
 
 from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, polished
 from .drift import depth_in_cone, motion_at, observed
 from .field import drivers
 from .lanes import (
-    CROSSING, ENDING, ENTERING, accept_all, interpolate_all, observe_row, particle, point_all, step_all,
+    CROSSING, ENTERING, MOST_STEPS, SHORTEST, accept_all, interpolate_all, interpolate_one, observe_row, particle,
+    point_all, step_all,
 )  # fmt: skip
 from .layout import (
-    BM, BT, D0, F0, F15, FLAG, K1, L1, LANES, LIMIT, MU, NEXT, OK, PHI, PN, RN, SIZE, SP, SR, STEP, STOP, TN, TURNS,
-    WATCH, H, K, M, Q, R, T,
+    R, PHI, T, H, TURNS, MU, K, Q, M, BM, BT, LIVE, ACCEPTED, REJECTED, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, FLAG,
+    K1, L1, F0, F15, STOP, SR, SP, D0, SIZE, LANES,
 )  # fmt: skip
 
 DRIFTING, FAILED = int(Cause.DRIFTING), int(Cause.FAILED)
 CONE_OFF, CONE_STOP = 0, 2
-MOST_STEPS = 20_000_000
-LEAST_STEP = 1e-13  # hours
 EVER = 1e300  # a time that no run reaches
-TWO_PI = 2.0 * np.pi
-TIME, END_R, END_MLT, END_ENERGY, END_PITCH, CAUSE, TURNED, CONE_TIME, ACCEPTED, REJECTED = range(10)
+# columns of `end`
+TIME, END_R, END_MLT, END_ENERGY, END_PITCH, CAUSE, TURNED, CONE_TIME, GOOD_STEPS, BAD_STEPS = range(10)
+# rows of the bookkeeping `S`: particle, driver segment, next saved time, cause
+OWNER, SEGMENT, FOLLOWING, FATE = range(4)
 
 
 @compiled
@@ -41,8 +42,11 @@ def segment_at(edges: Any, t: Any, sign: Any) -> Any:
 
 
 @compiled
-def enter_segment(W: Any, lane: Any, seg: Any, C: Any, edges: Any, segments: Any, t_end: Any, sign: Any) -> None:
+def enter_segment(
+    W: Any, S: Any, lane: Any, seg: Any, C: Any, edges: Any, segments: Any, t_end: Any, sign: Any
+) -> None:
     """Give `lane` the drivers of a segment, its end, and the slopes there."""
+    S[SEGMENT, lane] = seg
     for i in range(segments.shape[1]):
         W[D0 + i * LANES + lane] = segments[seg, i]
     limit = edges[seg + 1] if sign > 0.0 else edges[seg]
@@ -54,42 +58,43 @@ def enter_segment(W: Any, lane: Any, seg: Any, C: Any, edges: Any, segments: Any
 
 @compiled
 def release(
-    W: Any, lane: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any, i: Any
-) -> Any:
-    """Put particle `i` into `lane`; returns why it ended at once, or DRIFTING, and its driver segment and next
-    saved time."""
+    W: Any, S: Any, lane: Any, i: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any,
+    track: Any,
+) -> None:  # fmt: skip
+    """Put particle `i` into `lane`; its fate is other than DRIFTING when it ends at once."""
     t_end, sign, outer, inner, foot_re, cone, tolerance = rules
     r, phi, t = P[i, 0], P[i, 1], P[i, 2]
-    W[R + lane], W[PHI + lane], W[T + lane], W[TURNS + lane] = r, phi, t, 0.0
-    W[MU + lane], W[K + lane], W[Q + lane], W[M + lane] = (
-        P[i, 3],
-        P[i, 4],
-        P[i, 5],
-        P[i, 6],
-    )
-    seg = segment_at(edges, t, sign)
-    enter_segment(W, lane, seg, C, edges, segments, t_end, sign)
+    W[R + lane], W[PHI + lane], W[T + lane] = r, phi, t
+    W[MU + lane], W[K + lane], W[Q + lane], W[M + lane] = P[i, 3], P[i, 4], P[i, 5], P[i, 6]
+    W[TURNS + lane], W[ACCEPTED + lane], W[REJECTED + lane], W[WATCH + lane] = 0.0, 0.0, 0.0, 0.0
+    S[OWNER, lane], S[FATE, lane] = i, DRIFTING
+    enter_segment(W, S, lane, segment_at(edges, t, sign), C, edges, segments, t_end, sign)
     k1 = W[K1 + lane]
     W[H + lane] = initial_step(k1, W[L1 + lane], tolerance)
-    end[i, ACCEPTED], end[i, REJECTED] = 0.0, 0.0
-    j = np.searchsorted(sign * times, sign * t)
+    j = first_saved(times, t, sign)
     if j < times.size and times[j] == t:
-        track[0, i, j], track[1, i, j] = r, phi
+        track[i, 0, j], track[i, 1, j] = r, phi
         j += 1
+    S[FOLLOWING, lane] = j
     W[NEXT + lane] = times[j] if j < times.size else sign * EVER
-    cause = DRIFTING
-    W[WATCH + lane] = 0.0
     if cone != CONE_OFF:
         if depth_in_cone(r, phi, particle(W, lane), foot_re, C) >= 0.0:
             end[i, CONE_TIME] = t
-            cause = CONE if cone == CONE_STOP else cause
+            S[FATE, lane] = CONE if cone == CONE_STOP else DRIFTING
         else:
             W[WATCH + lane] = 1.0
     if r > outer or (r == outer and sign * k1 > 0.0):
-        cause = OUTER
+        S[FATE, lane] = OUTER
     if r < inner or (r == inner and sign * k1 < 0.0):
-        cause = INNER
-    return cause, seg, j
+        S[FATE, lane] = INNER
+
+
+@compiled
+def first_saved(times: Any, t: Any, sign: Any) -> Any:
+    """Index of the first saved time at or after `t` in the order of tracing."""
+    if sign > 0.0:
+        return np.searchsorted(times, t)
+    return times.size - np.searchsorted(times[::-1], t, side="right")
 
 
 @compiled
@@ -132,37 +137,77 @@ def end_step(W: Any, lane: Any, cause: Any, t: Any, r: Any, phi: Any) -> Any:
 
 
 @compiled
-def conclude(W: Any, lane: Any, P: Any, C: Any, cause: Any, end: Any, i: Any) -> None:
-    """Write the end of particle `i` in `lane`."""
-    r, phi = W[R + lane], W[PHI + lane]
-    end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T + lane], r, cause
+def conclude(W: Any, S: Any, lane: Any, P: Any, C: Any, end: Any) -> None:
+    """Write the end of the particle in `lane` and let the lane rest: whatever it computes then is never accepted."""
+    i, r, phi = S[OWNER, lane], W[R + lane], W[PHI + lane]
+    end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T + lane], r, S[FATE, lane]
     end[i, END_MLT], end[i, END_ENERGY], end[i, END_PITCH] = observed(r, phi, particle(W, lane), C)
     end[i, TURNED] = W[TURNS + lane] + (phi - P[i, 1]) / TWO_PI
+    end[i, GOOD_STEPS], end[i, BAD_STEPS] = W[ACCEPTED + lane], W[REJECTED + lane]
+    S[OWNER, lane], W[LIVE + lane] = -1, 0.0
 
 
 @compiled
-def save_all(W: Any, owner: Any, following: Any, sign: Any, times: Any, track: Any) -> None:
-    """Save every time that the lanes' steps passed."""
-    waiting = True
-    while waiting:
+def refill(
+    W: Any, S: Any, taken: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any
+) -> Any:
+    """Give every idle lane the next particle that does not end at its release; returns how many were taken in all."""
+    for lane in range(LANES):
+        while S[OWNER, lane] < 0 and taken < P.shape[0]:
+            release(W, S, lane, taken, P, C, edges, segments, rules, times, end, track)
+            taken += 1
+            W[LIVE + lane] = 1.0
+            if S[FATE, lane] != DRIFTING or W[T + lane] == rules[0]:
+                conclude(W, S, lane, P, C, end)
+    return taken
+
+
+@compiled
+def look_all(W: Any, S: Any, C: Any, rules: Any, times: Any, end: Any, track: Any) -> None:
+    """Before the step is taken: what did each lane meet within it, and which times did it pass?"""
+    sign, saving = rules[1], False
+    for lane in range(LANES):
+        saving = saving or (S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0)
+    if saving:
+        interpolate_all(W, C)
+    for lane in range(LANES):
+        if S[OWNER, lane] >= 0 and W[FLAG + lane] > 0.0:
+            if not saving:
+                interpolate_one(W, lane, C)
+            S[FATE, lane] = meet(W, lane, C, rules, end, S[OWNER, lane])
+    while saving:
         point_all(W)
-        waiting = False
+        saving = False
         for lane in range(LANES):
-            if owner[lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
-                i, j = owner[lane], following[lane]
-                track[0, i, j], track[1, i, j] = W[SR + lane], W[SP + lane]
-                following[lane] = j + 1
+            if S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
+                i, j = S[OWNER, lane], S[FOLLOWING, lane]
+                track[i, 0, j], track[i, 1, j] = W[SR + lane], W[SP + lane]
+                S[FOLLOWING, lane] = j + 1
                 W[NEXT + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
-                waiting = True
+                saving = True
 
 
 @compiled
-def rest(W: Any, lane: Any) -> None:
-    """Fill an idle lane with a particle that stands still at a safe place."""
-    for row in range(0, SIZE, LANES):
-        W[row + lane] = 0.0
-    W[R + lane], W[H + lane], W[Q + lane] = 5.0, 1e-3, 1.0
-    W[LIMIT + lane], W[NEXT + lane] = EVER, EVER
+def settle_all(W: Any, S: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, end: Any) -> Any:
+    """After the step: end what has ended, and take the others over the corners; returns whether a lane became
+    idle."""
+    t_end, sign = rules[0], rules[1]
+    idle = False
+    for lane in range(LANES):
+        if S[OWNER, lane] < 0:
+            continue
+        t = W[T + lane]
+        if S[FATE, lane] == DRIFTING and (
+            W[H + lane] < SHORTEST or W[ACCEPTED + lane] + W[REJECTED + lane] > MOST_STEPS
+        ):
+            S[FATE, lane] = FAILED
+        if S[FATE, lane] != DRIFTING or t == t_end:
+            conclude(W, S, lane, P, C, end)
+            idle = True
+        elif t == W[LIMIT + lane]:
+            seg = S[SEGMENT, lane] + (1 if sign > 0.0 else -1)
+            enter_segment(W, S, lane, seg, C, edges, segments, t_end, sign)
+    return idle
 
 
 @entry_point
@@ -183,67 +228,24 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
         To save.
     end : (n, 10)
         Takes time, r, mlt, energy, pitch, cause, turns, first time in the cone, accepted and rejected steps.
-    track : (4, n, n_time)
+    track : (n, 4, n_time)
         Takes r, mlt, energy, pitch; filled with NaN before.
     """
-    t_end, sign, outer, inner, foot_re, _, tolerance = rules
-    W = np.zeros(SIZE)
-    owner, seg, following = np.full(LANES, -1), np.zeros(LANES, np.int64), np.zeros(LANES, np.int64)
-    cause = np.full(LANES, DRIFTING)
-    taken, busy = 0, 0
-    for lane in range(LANES):
-        rest(W, lane)
-    refill = True
-    while refill or busy > 0:
-        if refill:
-            for lane in range(LANES):
-                while owner[lane] < 0 and taken < P.shape[0]:
-                    i = taken
-                    taken += 1
-                    cause[lane], seg[lane], following[lane] = release(
-                        W, lane, P, C, edges, segments, rules, times, end, track, i
-                    )
-                    if cause[lane] != DRIFTING or W[T + lane] == t_end:
-                        conclude(W, lane, P, C, cause[lane], end, i)
-                    else:
-                        owner[lane] = i
-                        busy += 1
-                if owner[lane] < 0:
-                    rest(W, lane)
-            refill = False
-            continue
-        step_all(W, C, sign, 1.0 / tolerance, outer, inner, foot_re)
-        saving, meeting = False, False
-        for lane in range(LANES):
-            if owner[lane] < 0:
-                W[OK + lane] = 0.0
-                continue
-            saving = saving or sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0
-            meeting = meeting or W[FLAG + lane] > ENDING
-        if saving or meeting:
-            interpolate_all(W, C)
-            for lane in range(LANES):
-                if owner[lane] >= 0 and W[FLAG + lane] > ENDING:
-                    cause[lane] = meet(W, lane, C, rules, end, owner[lane])
-            if saving:
-                save_all(W, owner, following, sign, times, track)
+    _, sign, outer, inner, foot_re, _, tolerance = rules
+    W, S = np.zeros(SIZE), np.zeros((4, LANES), np.int64)
+    W[R : R + LANES], W[Q : Q + LANES], W[H : H + LANES] = 5.0, 1.0, 1.0  # a place where a lane may rest
+    W[LIMIT : LIMIT + LANES] = sign * EVER
+    S[OWNER] = -1
+    taken = refill(W, S, 0, P, C, edges, segments, rules, times, end, track)
+    busy = np.max(S[OWNER]) >= 0
+    while busy:
+        calls = step_all(W, C, sign, 1.0 / tolerance, outer, inner, foot_re)
+        if calls > 0:
+            look_all(W, S, C, rules, times, end, track)
         accept_all(W)
-        for lane in range(LANES):
-            i = owner[lane]
-            if i < 0:
-                continue
-            good = W[OK + lane] > 0.0
-            end[i, ACCEPTED if good else REJECTED] += 1.0
-            if not good and (W[H + lane] < LEAST_STEP or end[i, ACCEPTED] + end[i, REJECTED] > MOST_STEPS):
-                cause[lane] = FAILED
-            if cause[lane] != DRIFTING or (good and W[T + lane] == t_end):
-                conclude(W, lane, P, C, cause[lane], end, i)
-                owner[lane] = -1
-                busy -= 1
-                refill = True
-            elif good and W[T + lane] == W[LIMIT + lane]:
-                seg[lane] += 1 if sign > 0.0 else -1
-                enter_segment(W, lane, seg[lane], C, edges, segments, t_end, sign)
+        if calls > 0 and settle_all(W, S, P, C, edges, segments, rules, end):
+            taken = refill(W, S, taken, P, C, edges, segments, rules, times, end, track)
+            busy = np.max(S[OWNER]) >= 0
     if times.size > 0:
         for i in range(P.shape[0]):
-            observe_row(track[0, i], track[1, i], track[2, i], track[3, i], (P[i, 3], P[i, 4], P[i, 5], P[i, 6]), C)
+            observe_row(track[i, 0], track[i, 1], track[i, 2], track[i, 3], (P[i, 3], P[i, 4], P[i, 5], P[i, 6]), C)

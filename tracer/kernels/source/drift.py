@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 
 from fields.constants import KV_PER_NT_RE2_TO_PER_H
-from tracer.kernels.arith import arc_tangent, compiled, inlined, sincos
+from tracer.kernels.arith import arc_tangent, compiled, inlined, inverse_root, sincos
 
 from .field import equator, foot, mirror, potential
 
@@ -29,7 +29,7 @@ def motion(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
     bm, bm_r, bm_phi, _ = mirror(k, r, s, c, C)
     _, e_r, e_phi = potential(r, s, c, t, C, D)
     # dW/dB_m = mu / gamma, gamma^2 = 1 + 2 mu B_m / (m c^2)
-    w = mu * inverse_charge / np.sqrt(1.0 + mu * bm * inverse_half_rest)
+    w = mu * inverse_charge * inverse_root(1.0 + mu * bm * inverse_half_rest)
     f = KV_PER_NT_RE2_TO_PER_H / (equator(r, s, c, C) * r)
     by_r, by_phi = -f * (w * bm_phi + e_phi), f * (w * bm_r + e_r)
     return by_r, by_phi, bm, bm_r * by_r + bm_phi * by_phi

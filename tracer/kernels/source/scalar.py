@@ -9,21 +9,21 @@ import numpy as np
 from tracer.kernels.arith import TWO_PI, compiled, entry_point, rough_power
 
 from .advance import (
-    ACCEPTED, CAUSE, CONE_OFF, CONE_STOP, CONE_TIME, DRIFTING, END_ENERGY, END_MLT, END_PITCH, END_R, FAILED,
-    LEAST_STEP, MOST_STEPS, REJECTED, TIME, TURNED, segment_at,
+    BAD_STEPS, CAUSE, CONE_OFF, CONE_STOP, CONE_TIME, DRIFTING, END_ENERGY, END_MLT, END_PITCH, END_R, FAILED,
+    GOOD_STEPS, TIME, TURNED, segment_at,
 )  # fmt: skip
 from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, polished
 from .drift import depth_in_cone, motion_at, observed
 from .field import drivers
-from .lanes import GROW, SAFETY, SHRINK
+from .lanes import GROW, LONGEST, MOST_STEPS, SAFETY, SHORTEST, SHRINK
 from .step import along, interpolant, trial
 
 
 @compiled
 def write(track: Any, i: Any, j: Any, r: Any, phi: Any, p: Any, C: Any) -> None:
     """One saved point."""
-    track[0, i, j] = r
-    track[1, i, j], track[2, i, j], track[3, i, j] = observed(r, phi, p, C)
+    track[i, 0, j] = r
+    track[i, 1, j], track[i, 2, j], track[i, 3, j] = observed(r, phi, p, C)
 
 
 @compiled
@@ -93,10 +93,10 @@ def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, en
         if not q <= 1.0:
             rejected += 1
             h = abs(step) * factor
-            cause = FAILED if h < LEAST_STEP else cause
+            cause = FAILED if h < SHORTEST else cause
             continue
         accepted += 1
-        h = max(h, abs(step) * factor) if clipped else abs(step) * factor
+        h = min(max(h, abs(step) * factor) if clipped else abs(step) * factor, LONGEST)
         kn, ln, _, _ = motion_at(tn, rn, pn, p, C, D)
         F = interpolant(t, r, phi, step, rn, pn, k1, l1, kn, ln, stages, p, C, D)
         watching = cone != CONE_OFF and np.isnan(end[i, CONE_TIME])
@@ -123,7 +123,7 @@ def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, en
     end[i, TIME], end[i, END_R], end[i, CAUSE] = t, r, cause
     end[i, END_MLT], end[i, END_ENERGY], end[i, END_PITCH] = observed(r, phi, p, C)
     end[i, TURNED] = turns + (phi - P[i, 1]) / TWO_PI
-    end[i, ACCEPTED], end[i, REJECTED] = accepted, rejected
+    end[i, GOOD_STEPS], end[i, BAD_STEPS] = accepted, rejected
 
 
 @entry_point

@@ -17,6 +17,41 @@ TINY = 1e-300  # keeps 0/0 away where the field is uniform along the step
 
 
 @inlined
+def solution(r: Any, phi: Any, h: Any, k1: Any, l1: Any, stages: Any) -> Any:
+    """The new point, and the estimate of the local error in R_E as DOP853 forms it."""
+    k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
+    rn = (
+        r + h * (tb.B1 * k1 + tb.B6 * k6 + tb.B7 * k7 + tb.B8 * k8 + tb.B9 * k9 + tb.B10 * k10 + tb.B11 * k11 + tb.B12
+        * k12)
+    )
+    pn = (
+        phi + h * (tb.B1 * l1 + tb.B6 * l6 + tb.B7 * l7 + tb.B8 * l8 + tb.B9 * l9 + tb.B10 * l10 + tb.B11 * l11 +
+        tb.B12 * l12)
+    )
+    e5r = (
+        tb.E5_1 * k1 + tb.E5_6 * k6 + tb.E5_7 * k7 + tb.E5_8 * k8 + tb.E5_9 * k9 + tb.E5_10 * k10 + tb.E5_11 * k11 +
+        tb.E5_12 * k12
+    )
+    e5p = (
+        tb.E5_1 * l1 + tb.E5_6 * l6 + tb.E5_7 * l7 + tb.E5_8 * l8 + tb.E5_9 * l9 + tb.E5_10 * l10 + tb.E5_11 * l11 +
+        tb.E5_12 * l12
+    )
+    e3r = (
+        tb.E3_1 * k1 + tb.E3_6 * k6 + tb.E3_7 * k7 + tb.E3_8 * k8 + tb.E3_9 * k9 + tb.E3_10 * k10 + tb.E3_11 * k11 +
+        tb.E3_12 * k12
+    )
+    e3p = (
+        tb.E3_1 * l1 + tb.E3_6 * l6 + tb.E3_7 * l7 + tb.E3_8 * l8 + tb.E3_9 * l9 + tb.E3_10 * l10 + tb.E3_11 * l11 +
+        tb.E3_12 * l12
+    )
+    # distances in R_E: r itself, and r times the angle
+    five = e5r * e5r + r * r * e5p * e5p
+    three = e3r * e3r + r * r * e3p * e3p
+    error = abs(h) * five / np.sqrt(0.5 * (five + 0.01 * three) + TINY)
+    return rn, pn, error
+
+
+@inlined
 def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D: Any) -> Any:
     """Try a step of `h` hours.
 
@@ -77,35 +112,9 @@ def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D:
         phi + h * (tb.A12_1 * l1 + tb.A12_4 * l4 + tb.A12_5 * l5 + tb.A12_6 * l6 + tb.A12_7 * l7 + tb.A12_8 * l8 +
         tb.A12_9 * l9 + tb.A12_10 * l10 + tb.A12_11 * l11), p, C, D
     )
-    rn = (
-        r + h * (tb.B1 * k1 + tb.B6 * k6 + tb.B7 * k7 + tb.B8 * k8 + tb.B9 * k9 + tb.B10 * k10 + tb.B11 * k11 + tb.B12
-        * k12)
-    )
-    pn = (
-        phi + h * (tb.B1 * l1 + tb.B6 * l6 + tb.B7 * l7 + tb.B8 * l8 + tb.B9 * l9 + tb.B10 * l10 + tb.B11 * l11 +
-        tb.B12 * l12)
-    )
-    e5r = (
-        tb.E5_1 * k1 + tb.E5_6 * k6 + tb.E5_7 * k7 + tb.E5_8 * k8 + tb.E5_9 * k9 + tb.E5_10 * k10 + tb.E5_11 * k11 +
-        tb.E5_12 * k12
-    )
-    e5p = (
-        tb.E5_1 * l1 + tb.E5_6 * l6 + tb.E5_7 * l7 + tb.E5_8 * l8 + tb.E5_9 * l9 + tb.E5_10 * l10 + tb.E5_11 * l11 +
-        tb.E5_12 * l12
-    )
-    e3r = (
-        tb.E3_1 * k1 + tb.E3_6 * k6 + tb.E3_7 * k7 + tb.E3_8 * k8 + tb.E3_9 * k9 + tb.E3_10 * k10 + tb.E3_11 * k11 +
-        tb.E3_12 * k12
-    )
-    e3p = (
-        tb.E3_1 * l1 + tb.E3_6 * l6 + tb.E3_7 * l7 + tb.E3_8 * l8 + tb.E3_9 * l9 + tb.E3_10 * l10 + tb.E3_11 * l11 +
-        tb.E3_12 * l12
-    )
-    # distances in R_E: r itself, and r times the angle
-    five = e5r * e5r + r * r * e5p * e5p
-    three = e3r * e3r + r * r * e3p * e3p
-    error = abs(h) * five / np.sqrt(0.5 * (five + 0.01 * three) + TINY)
-    return rn, pn, error, (k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12)
+    stages = (k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12)
+    rn, pn, error = solution(r, phi, h, k1, l1, stages)
+    return rn, pn, error, stages
 
 
 @compiled
@@ -116,30 +125,13 @@ def trial_at(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any,
 
 
 @inlined
-def interpolant(
-    t: Any, r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, k13: Any, l13: Any, stages: Any,
-    p: Any, C: Any, D: Any,
+def coefficients(
+    r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, k13: Any, l13: Any, stages: Any, late: Any
 ) -> Any:
-    """The interpolant's coefficients over an accepted step: eight for r, eight for phi."""
+    """The interpolant's coefficients over an accepted step, eight for r and eight for phi; `late` are stages 14 to
+    16."""
     k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
-    k14, l14 = slope(
-        t + tb.C14 * h, r + h * (tb.A14_1 * k1 + tb.A14_7 * k7 + tb.A14_8 * k8 + tb.A14_9 * k9 + tb.A14_10 * k10 +
-        tb.A14_11 * k11 + tb.A14_12 * k12 + tb.A14_13 * k13),
-        phi + h * (tb.A14_1 * l1 + tb.A14_7 * l7 + tb.A14_8 * l8 + tb.A14_9 * l9 + tb.A14_10 * l10 + tb.A14_11 * l11 +
-        tb.A14_12 * l12 + tb.A14_13 * l13), p, C, D
-    )
-    k15, l15 = slope(
-        t + tb.C15 * h, r + h * (tb.A15_1 * k1 + tb.A15_6 * k6 + tb.A15_7 * k7 + tb.A15_8 * k8 + tb.A15_11 * k11 +
-        tb.A15_12 * k12 + tb.A15_13 * k13 + tb.A15_14 * k14),
-        phi + h * (tb.A15_1 * l1 + tb.A15_6 * l6 + tb.A15_7 * l7 + tb.A15_8 * l8 + tb.A15_11 * l11 + tb.A15_12 * l12 +
-        tb.A15_13 * l13 + tb.A15_14 * l14), p, C, D
-    )
-    k16, l16 = slope(
-        t + tb.C16 * h, r + h * (tb.A16_1 * k1 + tb.A16_6 * k6 + tb.A16_7 * k7 + tb.A16_8 * k8 + tb.A16_9 * k9 +
-        tb.A16_13 * k13 + tb.A16_14 * k14 + tb.A16_15 * k15),
-        phi + h * (tb.A16_1 * l1 + tb.A16_6 * l6 + tb.A16_7 * l7 + tb.A16_8 * l8 + tb.A16_9 * l9 + tb.A16_13 * l13 +
-        tb.A16_14 * l14 + tb.A16_15 * l15), p, C, D
-    )
+    k14, k15, k16, l14, l15, l16 = late
     f4r = (
         h * (tb.D4_1 * k1 + tb.D4_6 * k6 + tb.D4_7 * k7 + tb.D4_8 * k8 + tb.D4_9 * k9 + tb.D4_10 * k10 + tb.D4_11 *
         k11 + tb.D4_12 * k12 + tb.D4_13 * k13 + tb.D4_14 * k14 + tb.D4_15 * k15 + tb.D4_16 * k16)
@@ -177,6 +169,35 @@ def interpolant(
         r, dr, h * k1 - dr, 2.0 * dr - h * (k1 + k13), f4r, f5r, f6r, f7r,
         phi, dp, h * l1 - dp, 2.0 * dp - h * (l1 + l13), f4p, f5p, f6p, f7p,
     )
+
+
+@inlined
+def interpolant(
+    t: Any, r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, k13: Any, l13: Any, stages: Any,
+    p: Any, C: Any, D: Any,
+) -> Any:
+    """The coefficients, with the stages that only they need."""
+    k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
+    k14, l14 = slope(
+        t + tb.C14 * h, r + h * (tb.A14_1 * k1 + tb.A14_7 * k7 + tb.A14_8 * k8 + tb.A14_9 * k9 + tb.A14_10 * k10 +
+        tb.A14_11 * k11 + tb.A14_12 * k12 + tb.A14_13 * k13),
+        phi + h * (tb.A14_1 * l1 + tb.A14_7 * l7 + tb.A14_8 * l8 + tb.A14_9 * l9 + tb.A14_10 * l10 + tb.A14_11 * l11 +
+        tb.A14_12 * l12 + tb.A14_13 * l13), p, C, D
+    )
+    k15, l15 = slope(
+        t + tb.C15 * h, r + h * (tb.A15_1 * k1 + tb.A15_6 * k6 + tb.A15_7 * k7 + tb.A15_8 * k8 + tb.A15_11 * k11 +
+        tb.A15_12 * k12 + tb.A15_13 * k13 + tb.A15_14 * k14),
+        phi + h * (tb.A15_1 * l1 + tb.A15_6 * l6 + tb.A15_7 * l7 + tb.A15_8 * l8 + tb.A15_11 * l11 + tb.A15_12 * l12 +
+        tb.A15_13 * l13 + tb.A15_14 * l14), p, C, D
+    )
+    k16, l16 = slope(
+        t + tb.C16 * h, r + h * (tb.A16_1 * k1 + tb.A16_6 * k6 + tb.A16_7 * k7 + tb.A16_8 * k8 + tb.A16_9 * k9 +
+        tb.A16_13 * k13 + tb.A16_14 * k14 + tb.A16_15 * k15),
+        phi + h * (tb.A16_1 * l1 + tb.A16_6 * l6 + tb.A16_7 * l7 + tb.A16_8 * l8 + tb.A16_9 * l9 + tb.A16_13 * l13 +
+        tb.A16_14 * l14 + tb.A16_15 * l15), p, C, D
+    )
+    late = (k14, k15, k16, l14, l15, l16)
+    return coefficients(r, phi, h, rn, pn, k1, l1, k13, l13, stages, late)
 
 
 @inlined
