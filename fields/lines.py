@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import ArrayLike
 
+from fields import arguments
 from fields.errors import InputError
 from fields.traced_line import ATOL_PER_R, LONGEST, RTOL, FieldLine, strength
 from fields.units import Floats
@@ -48,15 +49,30 @@ class TracedLines:
 
     def second_invariant(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """k in R_E nT^(1/2); arguments broadcast."""
-        return _each(lambda c, r_, p: self._line(r_, p).second_invariant(c), _pitch(cot2), _distance(r), _angle(phi))
+        return _each(
+            lambda c, r_, p: self._line(r_, p).second_invariant(c),
+            arguments.pitch(cot2),
+            arguments.distance(r),
+            arguments.angle(phi),
+        )
 
     def cot2_at(self, k: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """cot^2 of the equatorial pitch angle of the particle with second invariant `k`."""
-        return _each(lambda k_, r_, p: self._line(r_, p).excess_at(k_), _invariant(k), _distance(r), _angle(phi))
+        return _each(
+            lambda k_, r_, p: self._line(r_, p).excess_at(k_),
+            arguments.invariant(k),
+            arguments.distance(r),
+            arguments.angle(phi),
+        )
 
     def bounce_path(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """Speed times full bounce period, R_E; at cot2 = 0 its limit."""
-        return _each(lambda c, r_, p: self._line(r_, p).bounce_path(c), _pitch(cot2), _distance(r), _angle(phi))
+        return _each(
+            lambda c, r_, p: self._line(r_, p).bounce_path(c),
+            arguments.pitch(cot2),
+            arguments.distance(r),
+            arguments.angle(phi),
+        )
 
     def mirror_slopes(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> tuple[Floats, Floats]:
         """d ln B_m / dr (1/R_E) and d ln B_m / dphi (1/rad), both at fixed k, by eighth-order central differences."""
@@ -76,7 +92,7 @@ class TracedLines:
                 for n, weight in STENCIL
             )
 
-        c, radius, azimuth = _pitch(cot2), _distance(r), _angle(phi)
+        c, radius, azimuth = arguments.pitch(cot2), arguments.distance(r), arguments.angle(phi)
         by_r = _each(
             lambda c_, r_, p: along(c_, r_, p, STENCIL_STEP * r_, 0.0) / (STENCIL_STEP * r_), c, radius, azimuth
         )
@@ -85,11 +101,17 @@ class TracedLines:
 
     def foot_field(self, r: ArrayLike, phi: ArrayLike, foot_re: float) -> Floats:
         """B in nT where the line meets the sphere of radius `foot_re`."""
-        return _each(lambda r_, p: float(strength(self.model, self._foot(r_, p, foot_re))), _distance(r), _angle(phi))
+        return _each(
+            lambda r_, p: float(strength(self.model, self._foot(r_, p, foot_re))),
+            arguments.distance(r),
+            arguments.angle(phi),
+        )
 
     def tube_volume(self, r: ArrayLike, phi: ArrayLike, foot_re: float) -> Floats:
         """Integral of ds/B from foot to foot, R_E/nT."""
-        return _each(lambda r_, p: 2.0 * float(self._foot(r_, p, foot_re)[3]), _distance(r), _angle(phi))
+        return _each(
+            lambda r_, p: 2.0 * float(self._foot(r_, p, foot_re)[3]), arguments.distance(r), arguments.angle(phi)
+        )
 
     def equatorial_point(self, x: ArrayLike, y: ArrayLike, z: ArrayLike) -> tuple[Floats, Floats]:
         """(r, phi) where the line through the SM point (x, y, z) in R_E crosses the equator."""
@@ -112,7 +134,7 @@ class TracedLines:
             weight = bounce.cos / bounce.root
             return bounce.integral(weight * both) / bounce.integral(weight)
 
-        return _each(one, _pitch(cot2), _distance(r), _angle(phi))
+        return _each(one, arguments.pitch(cot2), arguments.distance(r), arguments.angle(phi))
 
     def _crossing(self, point: Floats) -> Floats:
         """(x, y) where the line through `point` crosses the equator."""
@@ -168,31 +190,3 @@ def _each(function: Callable[..., float], *arrays: ArrayLike) -> Floats:
     broad = np.broadcast_arrays(*(np.asarray(a, dtype=float) for a in arrays))
     flat = [function(*(float(a.flat[i]) for a in broad)) for i in range(broad[0].size)]
     return np.array(flat, dtype=float).reshape(broad[0].shape)
-
-
-def _pitch(cot2: ArrayLike) -> Floats:
-    value = np.asarray(cot2, dtype=float)
-    if not np.all((value >= 0) & np.isfinite(value)):
-        raise InputError("not the cot^2 of a pitch angle", "a finite number of at least 0", key="cot2")
-    return value
-
-
-def _invariant(k: ArrayLike) -> Floats:
-    value = np.asarray(k, dtype=float)
-    if not np.all((value >= 0) & np.isfinite(value)):
-        raise InputError("not a second invariant", "a finite number of at least 0", key="k")
-    return value
-
-
-def _angle(phi: ArrayLike) -> Floats:
-    value = np.asarray(phi, dtype=float)
-    if not np.all(np.isfinite(value)):
-        raise InputError("not an angle", "a finite number of radians", key="phi")
-    return value
-
-
-def _distance(r: ArrayLike) -> Floats:
-    value = np.asarray(r, dtype=float)
-    if not np.all((value > 0) & np.isfinite(value)):
-        raise InputError("not a positive distance", "r above 0 R_E", key="r_re")
-    return value

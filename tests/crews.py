@@ -1,10 +1,12 @@
-"""What the tests of worker processes share: a small run in many chunks, and the chunks as this process computes them."""
+"""What the tests of worker processes share: a small run in many chunks, and those as this process computes them."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable
 from functools import lru_cache
+from pathlib import Path
 
+import h5py
 from small_runs import population, span
 from storm_runs import storm
 
@@ -37,3 +39,13 @@ def assert_all_there(chunks: Iterable[Chunk]) -> None:
     found = [(chunk.first, bits(chunk)) for chunk in chunks]
     assert sorted(first for first, _ in found) == [first for first, _ in SPANS]
     assert dict(found) == by_this_process()
+
+
+def datasets(path: Path) -> dict[str, bytes]:
+    """Every dataset of a file by its place."""
+    found: dict[str, bytes] = {}
+    with h5py.File(path) as file:
+        file.visititems(
+            lambda name, item: found.update({name: item[...].tobytes()}) if isinstance(item, h5py.Dataset) else None
+        )
+    return found

@@ -52,6 +52,6 @@ def test_a_missing_system_package_is_named(tmp_path: Path, script: str, python: 
     assert done.stdout == ""
 
 
-@pytest.mark.parametrize("name", ["scripts/quickstart", "scripts/test", ".ci/run"])
+@pytest.mark.parametrize("name", ["scripts/quickstart", "scripts/test", "scripts/bench", ".ci/run"])
 def test_scripts_are_executable(name: str) -> None:
     assert (ROOT / name).stat().st_mode & 0o111

@@ -19,6 +19,7 @@ TABLE = {
         2e-15, "absolute: the angle is doubled twice, which multiplies a rounding of 1e-16 by a few"
     ),
     "power": Tolerance(5e-15, "exp(y ln x): a rounding of 1e-16 times y ln x, which is up to 24"),
+    "rough root": Tolerance(1e-15, "iterated by multiplications: the last digit may be off, squared twice as much"),
     "mirror ratio": Tolerance(1e-13, "what the polynomial of degree 26 promises at all pitch angles"),
     "mirror ratio slope": Tolerance(1e-12, "its derivative, where the last coefficients count 26 times"),
     "bounce integral": Tolerance(1e-10, "what is asked of T and Y from 1 to 89.9 degrees, and of Y / cos^2 above"),

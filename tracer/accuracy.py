@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from fields.units import Floats
-from tracer.integrate import advance, prepare
+from tracer.integrate import advance, prepare_at
 from tracer.kernels.build import Kernel
 from tracer.scenario import Scenario
 
@@ -52,7 +52,7 @@ def sample(scenario: Scenario, size: int, seed: int) -> np.ndarray:
 
 def states_of(scenario: Scenario, index: np.ndarray) -> Floats:
     """Kernel states of scattered particles."""
-    return np.concatenate([prepare(scenario, int(i), int(i) + 1).state for i in index])
+    return prepare_at(scenario, index).state
 
 
 def separation(end: Floats, other: Floats) -> Floats:

@@ -67,10 +67,23 @@ def check(run: str, as_json: bool) -> None:
 @click.argument("run", type=click.Path())
 @click.option("-o", "--output", type=click.Path(), help="Trajectory file to write.  [default: RUN's stem.h5, here]")
 @click.option("--overwrite", is_flag=True, help="Replace an existing file, once the new one is whole.")
+@click.option("--resume", is_flag=True, help="Go on with a run that was interrupted, to the same bits.")
 @click.option("--threads", type=click.IntRange(1, 1024), help="Threads to use.  [default: all processors]")
+@click.option("--workers", type=click.IntRange(1, 1024), metavar="N", help="Worker processes to use on this machine.")
+@click.option("--scheduler", metavar="ADDRESS", help="A dask.distributed cluster to use: address or scheduler file.")
 @click.option("--quiet", is_flag=True, help="No progress, no closing table.")
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON object in place of the table.")
-def trace(run: str, output: str | None, overwrite: bool, threads: int | None, quiet: bool, as_json: bool) -> None:
+def trace(
+    run: str,
+    output: str | None,
+    overwrite: bool,
+    resume: bool,
+    threads: int | None,
+    workers: int | None,
+    scheduler: str | None,
+    quiet: bool,
+    as_json: bool,
+) -> None:
     """Trace all particles of RUN into a trajectory file."""
     from tracer.analysis.summary import sentences
     from tracer.pipeline import trace as trace_run
@@ -82,9 +95,20 @@ def trace(run: str, output: str | None, overwrite: bool, threads: int | None, qu
     scenario = load(run)
     for warning in (*scenario.field.warnings(), *scenario.origin.remarks):
         click.echo(f"{PREFIX}: warning: {warning}", err=True)
-    result = trace_run(scenario, out, overwrite=overwrite, threads=threads, watcher=watcher(quiet))
+    result = trace_run(
+        scenario,
+        out,
+        overwrite=overwrite,
+        resume=resume,
+        threads=threads,
+        workers=workers,
+        scheduler=scheduler,
+        watcher=watcher(quiet),
+    )
     if as_json:
-        click.echo(_json({"file": out, **closing(result)}))
+        click.echo(_json({"file": out, "disk_bytes": Path(out).stat().st_size, **closing(result)}))
+    elif not result.work:
+        click.echo(f"{out}: complete already, nothing to resume")
     elif not quiet:
         click.echo(closing_text(result))
         click.echo("")
@@ -97,12 +121,31 @@ def trace(run: str, output: str | None, overwrite: bool, threads: int | None, qu
 @click.argument("file", type=click.Path())
 @click.option("-o", "--output", "directory", type=click.Path(), default=".", help="Folder for them.  [default: here]")
 @click.option("--format", "format_", type=click.Choice(["png", "svg", "pdf"]), default="png", show_default=True)
+@click.option(
+    "--arrival-r-re", type=float, metavar="R", help="Distance of the arrivals figure.  [default: a telling one]"
+)
+@click.option("--arrival-mlt-h", type=(float, float), metavar="FROM TO", help="Its sector of local time, eastward.")
 @click.option("--overwrite", is_flag=True, help="Replace existing figures.")
-def draw(file: str, directory: str, format_: str, overwrite: bool) -> None:
+def draw(
+    file: str,
+    directory: str,
+    format_: str,
+    arrival_r_re: float | None,
+    arrival_mlt_h: tuple[float, float] | None,
+    overwrite: bool,
+) -> None:
     """Draw the figures that fit FILE."""
     from tracer.figures import draw as draw_file
 
-    for path in draw_file(file, directory, format=format_, overwrite=overwrite):
+    written = draw_file(
+        file,
+        directory,
+        format=format_,
+        overwrite=overwrite,
+        arrival_r_re=arrival_r_re,
+        arrival_mlt_h=arrival_mlt_h,
+    )
+    for path in written:
         click.echo(f"wrote {path}")
 
 

@@ -13,7 +13,7 @@ import uuid
 from collections import deque
 from collections.abc import Generator, Iterable, Iterator
 from concurrent.futures import CancelledError
-from contextlib import suppress
+from contextlib import ExitStack, contextmanager, suppress
 from dataclasses import dataclass
 from pathlib import Path
 from queue import Empty, SimpleQueue
@@ -21,10 +21,11 @@ from types import TracebackType
 from typing import TYPE_CHECKING, Self
 
 from fields.errors import InputError
+from tracer.integrate import Interrupted
 from tracer.progress import Watcher
 from tracer.records import Chunk
 from tracer.scenario import Scenario
-from tracer.stopping import Stopped
+from tracer.stopping import WorkersLost
 from tracer.worker import NotHeld, differences, dismiss, enlist, identity, packed, work
 
 if TYPE_CHECKING:
@@ -34,7 +35,7 @@ log = logging.getLogger(__name__)
 
 CONNECT_S = 10.0  # to reach the scheduler
 GATHERING_S = 60.0  # to wait for a first worker, or for another when none is left
-FETCH_S = 120.0  # for one result to arrive
+FETCH_S = 2.0, 120.0  # for one result to arrive: at first, and at most
 SURVEY_S = 2.0  # between two looks at who has come and gone
 TICK_S = 0.5
 PARTING_S = 1.0
@@ -84,24 +85,24 @@ class Cluster:
         return sum(self._threads.values())
 
     def __enter__(self) -> Self:
-        self._client = connected(self._address)
-        try:
+        with ExitStack() as stack:
+            self._client = stack.enter_context(connected(self._address))
+            stack.callback(self._part)
             self._gather(starting=True)
             if self._refused:
                 named = ", ".join(f"{address} ({wrong})" for address, wrong in sorted(self._refused.items()))
                 remedy = "workers with the same versions, sources and kind of processor, or a cluster without these"
-                raise self._fault(f"has workers unlike this process: {named}", remedy)
+                raise fault(self._address, f"has workers unlike this process: {named}", remedy)
             if not self._threads:
-                raise self._fault(f"has no workers after {GATHERING_S:g} s", f"start some: dask worker {self._address}")
-        except BaseException:
-            self._part()
-            raise
+                remedy = f"start some: dask worker {self._address}"
+                raise fault(self._address, f"has no workers after {GATHERING_S:g} s", remedy)
+            self._leave = stack.pop_all()
         return self
 
     def __exit__(
         self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
     ) -> None:
-        self._part()
+        self._leave.close()
 
     def chunks(self, spans: Iterable[Span], tolerance: float, watch: Watcher) -> Generator[Chunk]:
         """The chunks of all spans in order of completion; no worker has more than its threads and one in hand.
@@ -111,17 +112,17 @@ class Cluster:
 
         Raises
         ------
-        Stopped
+        WorkersLost
             When the scheduler or all workers are lost, or a chunk ends every worker that tries it.
         """
         fresh = iter(spans)
         while True:
-            if time.monotonic() - self._surveyed > SURVEY_S:
+            if not self._threads or time.monotonic() - self._surveyed > SURVEY_S:
                 self._gather()
                 if not self._threads:
-                    raise Stopped(f"no worker was left at {self._address} for {GATHERING_S:g} s")
+                    raise WorkersLost(f"no worker was left at {self._address} for {GATHERING_S:g} s")
             self._submit(fresh, tolerance)
-            if not self._flying:
+            if not self._flying:  # and nothing is left to give, for there are workers
                 return
             try:
                 future = self._landed.get(timeout=TICK_S)
@@ -130,7 +131,7 @@ class Cluster:
             task = self._flying.pop(future, None)
             if task is None:  # called back meanwhile
                 continue
-            chunk = self._fetched(future)
+            chunk = self._fetched(future, task)
             if chunk is None:
                 self._again.append(task.span)
                 continue
@@ -149,24 +150,30 @@ class Cluster:
             self._flying[future] = Task(span, workers)
             future.add_done_callback(self._landed.put)
 
-    def _fetched(self, future: Future) -> Chunk | None:
+    def _fetched(self, future: Future, task: Task) -> Chunk | None:
         """The chunk; None when it must be computed again."""
         from dask.distributed import KilledWorker
 
-        if future.status == "finished":
-            with suppress(TimeoutError, CancelledError):  # else who holds it is gone
-                chunk: Chunk = future.result(timeout=FETCH_S)
+        patience, most = FETCH_S
+        while future.status == "finished" and patience <= most:
+            with suppress(OSError, CancelledError):  # else the worker that kept it is slow, or gone
+                chunk: Chunk = future.result(timeout=patience)
                 return chunk
+            self._survey()
+            if not task.workers & self._threads.keys():
+                return None
+            patience *= 2
         if future.status != "error":
             self._see_scheduler()
             return None
         error = future.exception()
-        if isinstance(error, NotHeld):  # a worker was started anew at the address of an old one
+        if isinstance(error, (NotHeld, Interrupted)):  # it was started anew, or held too many runs
             self._threads.clear()
-            self._surveyed = 0.0
             return None
         if isinstance(error, KilledWorker):
-            raise Stopped(f"several workers of {self._address} died on one chunk, the last of them {error.last_worker}")
+            raise WorkersLost(
+                f"several workers of {self._address} died on one chunk, the last of them {error.last_worker}"
+            )
         raise error
 
     def _gather(self, starting: bool = False) -> None:
@@ -190,12 +197,15 @@ class Cluster:
     def _survey(self) -> None:
         """Give the run to workers that are new here, and see what they are."""
         self._see_scheduler()
-        here = self._client.nthreads()
-        self._threads = {address: threads for address, threads in self._threads.items() if address in here}
-        new = [address for address in here if address not in self._threads and address not in self._refused]
-        if not new:
-            return
-        answers = self._client.run(enlist, self._key, self._data, workers=new, on_error="return")
+        try:
+            here = self._client.nthreads()
+            self._threads = {address: threads for address, threads in self._threads.items() if address in here}
+            new = [address for address in here if address not in self._threads and address not in self._refused]
+            if not new:
+                return
+            answers = self._client.run(introduced, self._key, self._data, workers=new, on_error="return")
+        except OSError:
+            raise self._lost() from None
         for address, answer in answers.items():
             wrong = unlike(answer, self._identity)
             if wrong:
@@ -205,54 +215,87 @@ class Cluster:
 
     def _see_scheduler(self) -> None:
         if self._client.status != "running":
-            raise Stopped(f"the scheduler at {self._address} was lost")
+            raise self._lost()
 
-    def _fault(self, problem: str, remedy: str) -> InputError:
-        return InputError(problem, remedy, key="scheduler", value=self._address)
+    def _lost(self) -> WorkersLost:
+        return WorkersLost(f"the scheduler at {self._address} was lost")
 
     def _part(self) -> None:
-        """Leave the cluster as it was, without waiting for what does not answer."""
+        """Have the workers forget the run, without waiting for what does not answer."""
         self._flying.clear()
         if self._client.status == "running":
             parting = threading.Thread(target=self._dismiss, daemon=True)
             parting.start()
             parting.join(PARTING_S)
-        with suppress(TimeoutError):
-            self._client.close(timeout=PARTING_S)
 
     def _dismiss(self) -> None:
         with suppress(Exception):  # who does not answer will not have to forget
             self._client.run(dismiss, self._key, workers=list(self._threads), on_error="ignore")
 
 
+def introduced(key: str, data: bytes) -> dict[str, str] | str:
+    """On a worker: take a run, and say what this worker is; or why it cannot."""
+    try:
+        return enlist(key, data)
+    except Exception as error:  # errors do not always survive the journey
+        return f"{type(error).__name__}: {error}"
+
+
 def unlike(answer: object, ours: dict[str, str]) -> str:
-    """What is wrong with a worker that answered so to `enlist`; nothing when that is open or all is well."""
+    """What is wrong with a worker that `introduced` itself so; nothing when that is open or all is well."""
     if isinstance(answer, OSError):
         return ""
     if isinstance(answer, dict):
         return ", ".join(differences(answer, ours))
-    return f"cannot load the run: {type(answer).__name__}: {answer}"
+    return f"cannot load the run: {str(answer) or repr(answer)}"
 
 
-def connected(address: str) -> Client:
-    """A client of the scheduler at an address or of a scheduler file."""
+@contextmanager
+def connected(address: str) -> Iterator[Client]:
+    """A client of the scheduler at an address or of a scheduler file.
 
-    def fault(problem: str, remedy: str) -> InputError:
-        return InputError(problem, remedy, key="scheduler", value=address)
-
+    Meanwhile dask does not log its own account of what is lost, page by page: the run has a line for it.
+    """
     try:
         from dask.distributed import Client
     except ImportError:
-        raise fault("takes dask.distributed, which is not installed", "pip install 'driftrose[cluster]'") from None
+        remedy = "pip install 'driftrose[cluster]'"
+        raise fault(address, "takes dask.distributed, which is not installed", remedy) from None
     remedy = "the address that dask scheduler printed, or the path of its scheduler file"
     if not address:
-        raise fault("is empty", remedy)
+        raise fault(address, "is empty", remedy)
     by_file = address.endswith(".json")
     if by_file and not Path(address).is_file():
-        raise fault("no such file", remedy)
-    place = {"scheduler_file": address} if by_file else {"address": address}
+        raise fault(address, "no such file", remedy)
+    with silent("distributed"):
+        place = {"scheduler_file": address} if by_file else {"address": address}
+        try:
+            client = Client(**place, timeout=CONNECT_S, set_as_default=False, name="driftrose")
+        except (OSError, ValueError) as error:
+            reason = str(error).partition("\n")[0]
+            raise fault(address, f"no scheduler answers: {reason}", remedy) from None
+        try:
+            yield client
+        finally:
+            with suppress(TimeoutError):
+                client.close(timeout=PARTING_S)
+
+
+@contextmanager
+def silent(name: str) -> Iterator[None]:
+    """Without what the loggers below a name have to say."""
+    known = logging.root.manager.loggerDict.items()
+    loggers = [logger for key, logger in known if key.startswith(name) and isinstance(logger, logging.Logger)]
+    loud = [logger for logger in loggers if not logger.disabled]
+    for logger in loud:
+        logger.disabled = True
     try:
-        return Client(**place, timeout=CONNECT_S, set_as_default=False, name="driftrose")
-    except (OSError, ValueError) as error:
-        reason = str(error).partition("\n")[0]
-        raise fault(f"no scheduler answers: {reason}", remedy) from None
+        yield
+    finally:
+        for logger in loud:
+            logger.disabled = False
+
+
+def fault(address: str, problem: str, remedy: str) -> InputError:
+    """What is wrong with a cluster."""
+    return InputError(problem, remedy, key="scheduler", value=address)

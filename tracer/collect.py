@@ -10,15 +10,17 @@ import numpy as np
 
 from tracer.records import GROUPS, Chunk, Result
 from tracer.scenario import Scenario
+from tracer.store_attrs import provenance
 from tracer.store_writer import stored
 
 
 class Collector:
     """Gathers chunks into one `Result`."""
 
-    def __init__(self, scenario: Scenario, attrs: Mapping[str, Any]) -> None:
+    def __init__(self, scenario: Scenario) -> None:
+        self.begun: dict[str, Any] | None = None
         self._scenario = scenario
-        self._attrs = dict(attrs)
+        self._attrs: dict[str, Any] = {}
         count, times = scenario.count, scenario.save_times_h.size
         shapes = {"particle": (count,), "track": (count, times), "end": (count,)}
         width = {"track": "f4"} if scenario.output.tracks == "single" else {}
@@ -35,6 +37,19 @@ class Collector:
         self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
     ) -> None:
         pass
+
+    def begin(self, attrs: Mapping[str, Any]) -> None:
+        """Take the attributes that are known at the start."""
+        self.begun = dict(attrs)
+        self._attrs = {**provenance(self._scenario), **attrs}
+
+    def missing(self) -> list[tuple[int, int]]:
+        """The particles to trace, as spans: all of them."""
+        return [(0, self._scenario.count)]
+
+    def stopped(self) -> str:
+        """What to say of a run that was stopped."""
+        return "stopped before the end; nothing was kept"
 
     def write(self, chunk: Chunk) -> None:
         """Put the columns of some consecutive particles at their place."""

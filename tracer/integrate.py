@@ -8,11 +8,12 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from fields.units import Floats, cot2_of_pitch, k_to_re_sqrtG, mu_to_MeV_per_G, phi_from_mlt, rest_energy_keV
 from tracer.adiabatic import momentum_term
 from tracer.kernels.build import Kernel, kernel_for
-from tracer.population import initial_state
+from tracer.population import initial_state, initial_state_at
 from tracer.records import END, PARTICLE, TRACK, Chunk
 from tracer.scenario import Scenario
 
@@ -49,7 +50,15 @@ class Prepared:
 
 def prepare(scenario: Scenario, first: int, stop: int) -> Prepared:
     """Initial states and invariants of particles `first` to `stop` - 1."""
-    columns = initial_state(scenario, first, stop)
+    return _prepared(scenario, initial_state(scenario, first, stop))
+
+
+def prepare_at(scenario: Scenario, index: NDArray[np.int64]) -> Prepared:
+    """Initial states and invariants of scattered particles."""
+    return _prepared(scenario, initial_state_at(scenario, index))
+
+
+def _prepared(scenario: Scenario, columns: dict[str, np.ndarray]) -> Prepared:
     r, phi = columns["r_re"], phi_from_mlt(columns["mlt_h"])
     cot2 = cot2_of_pitch(columns["pitch_deg"])
     rest = rest_energy_keV(columns["mass_kg"])

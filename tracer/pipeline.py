@@ -5,25 +5,27 @@ from __future__ import annotations
 import os
 import threading
 import time
-from collections.abc import Generator, Iterator
+from collections.abc import Generator, Iterable, Iterator, Sequence
 from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
 from contextlib import closing
-from pathlib import Path
-from typing import Any
 
 import numpy as np
 
+from fields.errors import InputError
 from tracer import store
 from tracer.accuracy import audit, run_pilot
 from tracer.collect import Collector
+from tracer.crew import Crew, hired
 from tracer.integrate import Interrupted, compile_kernel, run_chunk
-from tracer.kernels.build import Kernel
+from tracer.kernels.build import Kernel, program_of
 from tracer.progress import Silent, Watcher
 from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
-from tracer.stopping import Stopped
+from tracer.stopping import Stopped, WorkersLost
 
-CHUNK = 4096  # particles: one row of chunks in the file
+CHUNK = 4096  # particles
+Span = tuple[int, int]
+Sink = store.TrajectoryWriter | Collector
 
 
 def trace(
@@ -31,7 +33,10 @@ def trace(
     out: str | os.PathLike[str] | None = None,
     *,
     overwrite: bool = False,
+    resume: bool = False,
     threads: int | None = None,
+    workers: int | None = None,
+    scheduler: str | None = None,
     watcher: Watcher | None = None,
 ) -> Result:
     """Trace all particles of a scenario.
@@ -43,9 +48,16 @@ def trace(
     out : path, optional
         Trajectory file to stream to; without it the result stays in memory.
     overwrite : bool
-        Replace an existing file, at the final move.
+        Replace an existing file, at the final move; and what an interrupted run has left, at once.
+    resume : bool
+        Go on with an interrupted run of the same scenario, to the same bits. When `out` is complete already, it is
+        opened, and ``result.work`` is empty.
     threads : int, optional
-        All processors by default. The result does not depend on it.
+        All processors by default; of each worker process, one. The result does not depend on it.
+    workers : int, optional
+        So many processes on this machine do the work. The result does not depend on them either.
+    scheduler : str, optional
+        The workers of a dask.distributed cluster do the work: the address of its scheduler, or its scheduler file.
     watcher : Watcher, optional
         Told how the run goes.
 
@@ -57,47 +69,69 @@ def trace(
     Raises
     ------
     InputError
-        When `out` cannot be written or exists.
+        When `out` cannot be written or exists; with `resume`, when there is nothing to resume, or when the input, the
+        versions or the processor are not those of the interrupted run; when a cluster cannot be reached, or has workers
+        of other versions or processors.
     Stopped
-        On Ctrl-C; nothing is left behind.
+        On Ctrl-C, a full disk, or when the cluster is lost. What was finished is kept beside `out`, for `resume`.
     """
-    try:
-        return _trace(scenario, out, overwrite, threads or processors(), watcher or Silent())
-    except (KeyboardInterrupt, Interrupted):
-        raise Stopped("stopped before the end; nothing was kept") from None
-
-
-def _trace(
-    scenario: Scenario, out: str | os.PathLike[str] | None, overwrite: bool, threads: int, watch: Watcher
-) -> Result:
+    if resume:
+        if out is None:
+            raise InputError("nothing to resume in memory", "the name of the file", key="out")
+        finished = store.finished(out, scenario)
+        if finished is not None:
+            return finished
     began = time.perf_counter()
-    if out is not None:
-        store.check_output(out, scenario, overwrite)
-    watch.compiling()
+    watch = watcher or Silent()
+    crew = hired(scenario, threads, workers, scheduler)
+    sink = _sink(scenario, out, overwrite, resume)
+    try:
+        try:
+            with sink:
+                watch.compiling()
+                with crew as helpers:
+                    return _traced(scenario, sink, helpers, threads or processors(), watch, began)
+        finally:
+            watch.done()
+    except (KeyboardInterrupt, Interrupted):
+        raise Stopped(sink.stopped()) from None
+    except WorkersLost as lost:
+        raise Stopped(f"{lost}; {sink.stopped()}") from None
+
+
+def _traced(scenario: Scenario, sink: Sink, crew: Crew | None, threads: int, watch: Watcher, began: float) -> Result:
     kernel = compile_kernel(scenario)
-    watch.piloting()
-    pilot = run_pilot(scenario, kernel)
-    extra: dict[str, Any] = {"local_tolerance_re": pilot.local_tolerance}
-    work = {"accepted": 0.0, "rejected": 0.0}
+    if sink.begun is None:
+        watch.piloting()
+        sink.begin({"local_tolerance_re": run_pilot(scenario, kernel).local_tolerance})
+    assert sink.begun is not None
+    tolerance = float(sink.begun["local_tolerance_re"])
+    missing = sink.missing()
+    work = {"accepted": 0.0, "rejected": 0.0, "particles": float(sum(stop - first for first, stop in missing))}
     moving = time.perf_counter()
-    with _sink(scenario, out, extra, overwrite) as sink:
-        with closing(chunks(scenario, kernel, pilot.local_tolerance, threads, watch)) as coming:
-            for chunk in coming:
-                sink.write(chunk)
-                work = {name: work[name] + chunk.work[name] for name in work}
-        traced_s = time.perf_counter() - moving
-        errors = audit(scenario, kernel, pilot.local_tolerance)
-        measured = {
-            "end_error_50_re": errors.median,
-            "end_error_99_re": errors.most,
-            "end_error_100_re": errors.worst,
-            "end_error_sample": errors.count,
-        }
-        sink.finish(measured)
-    watch.done()
-    work |= {"traced_s": traced_s, "wall_s": time.perf_counter() - began}
-    result = sink.result() if isinstance(sink, Collector) else store.open(sink.path)
-    result.work.update(work, particles_per_s=scenario.count / traced_s)
+    watch.tracing(int(work["particles"]))
+    slots = crew.slots if crew else threads
+    spans = pieces(missing, min(chunk_size(scenario.count, slots), store.most_rows(scenario)))
+    source = (
+        crew.chunks(spans, tolerance, watch) if crew else chunks(scenario, kernel, spans, tolerance, threads, watch)
+    )
+    with closing(source) as coming:
+        for chunk in coming:
+            sink.write(chunk)
+            for name in ("accepted", "rejected"):
+                work[name] += chunk.work[name]
+    traced_s = time.perf_counter() - moving
+    errors = audit(scenario, kernel, tolerance)
+    measured = {
+        "end_error_50_re": errors.median,
+        "end_error_99_re": errors.most,
+        "end_error_100_re": errors.worst,
+        "end_error_sample": errors.count,
+    }
+    sink.finish(measured)
+    result = sink.result()
+    rate = work["particles"] / traced_s
+    result.work.update(work, traced_s=traced_s, wall_s=time.perf_counter() - began, particles_per_s=rate)
     return result
 
 
@@ -106,25 +140,23 @@ def processors() -> int:
     return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
-def chunks(scenario: Scenario, kernel: Kernel, tolerance: float, threads: int, watch: Watcher) -> Generator[Chunk]:
-    """All chunks in order of completion; never more in memory than there are threads and one.
+def chunks(
+    scenario: Scenario, kernel: Kernel, spans: Iterable[Span], tolerance: float, threads: int, watch: Watcher
+) -> Generator[Chunk]:
+    """The chunks of all spans in order of completion; never more in memory than there are threads and one.
 
     Whatever ends it early, closing included, the threads have ended by then too.
     """
     halt = threading.Event()
-    size = chunk_size(scenario.count, threads)
-    watch.tracing(scenario.count)
 
-    def one(first: int) -> Chunk:
-        return run_chunk(
-            scenario, kernel, first, min(first + size, scenario.count), tolerance, watch.advanced, halt.is_set
-        )
+    def one(first: int, stop: int) -> Chunk:
+        return run_chunk(scenario, kernel, first, stop, tolerance, watch.advanced, halt.is_set)
 
     with ThreadPoolExecutor(threads) as pool:
         running: set[Future[Chunk]] = set()
         try:
-            for first in range(0, scenario.count, size):
-                running.add(pool.submit(one, first))
+            for first, stop in spans:
+                running.add(pool.submit(one, first, stop))
                 if len(running) > threads:
                     yield from _finished(running)
             while running:
@@ -133,9 +165,16 @@ def chunks(scenario: Scenario, kernel: Kernel, tolerance: float, threads: int, w
             halt.set()  # those still at work, if any, stop at their next batch; leaving the pool waits for them
 
 
+def pieces(spans: Sequence[Span], size: int) -> Iterator[Span]:
+    """The same particles in spans of at most `size`, cut at its multiples."""
+    for begin, end in spans:
+        for cut in range(begin // size * size, end, size):
+            yield max(cut, begin), min(cut + size, end)
+
+
 def chunk_size(count: int, threads: int) -> int:
-    """Particles of a chunk: whole rows of the file's chunks, or less when there would not be enough for all
-    threads."""
+    """Particles of a chunk: as many as a stripe of the file has at most, or less when there would not be enough for
+    all threads."""
     share = -(-count // (4 * threads))
     return int(np.clip(share, 1, CHUNK))
 
@@ -147,9 +186,7 @@ def _finished(running: set[Future[Chunk]]) -> Iterator[Chunk]:
         yield future.result()
 
 
-def _sink(
-    scenario: Scenario, out: str | os.PathLike[str] | None, extra: dict[str, Any], overwrite: bool
-) -> store.TrajectoryWriter | Collector:
+def _sink(scenario: Scenario, out: str | os.PathLike[str] | None, overwrite: bool, resume: bool) -> Sink:
     if out is None:
-        return Collector(scenario, {**store.provenance(scenario), **extra})
-    return store.TrajectoryWriter(Path(out), scenario, extra, overwrite)
+        return Collector(scenario)
+    return store.TrajectoryWriter(out, scenario, overwrite=overwrite, resume=resume, program=program_of(scenario.field))

@@ -8,11 +8,11 @@ from typing import Any
 import numpy as np
 
 from fields.field import Field
-from tracer.accuracy import PILOT_SEED, run_pilot, sample
+from tracer.accuracy import PILOT_SEED, run_pilot, sample, states_of
 from tracer.adiabatic import periods
-from tracer.integrate import advance, compile_kernel, prepare
+from tracer.integrate import advance, compile_kernel
 from tracer.pipeline import CHUNK, chunk_size, processors
-from tracer.population import initial_state
+from tracer.population import initial_state_at
 from tracer.scenario import Population, Scenario, Species
 from tracer.store import expected_bytes
 from tracer.validity import ratios
@@ -60,8 +60,7 @@ def check(scenario: Scenario, threads: int | None = None) -> dict[str, Any]:
 
 def _population(scenario: Scenario, population: Population, offset: int) -> dict[str, Any]:
     index = offset + _spread(population.count)
-    rows = [initial_state(scenario, int(i), int(i) + 1) for i in index]
-    columns = {name: np.concatenate([row[name] for row in rows]) for name in rows[0]}
+    columns = initial_state_at(scenario, index)
     return {
         "name": population.name,
         "species": population.species.name,
@@ -98,8 +97,7 @@ def _work(scenario: Scenario, threads: int) -> dict[str, float]:
     began = time.perf_counter()
     pilot = run_pilot(scenario, kernel)
     pilot_s = time.perf_counter() - began
-    states = [prepare(scenario, int(i), int(i) + 1).state for i in sample(scenario, TIMED, PILOT_SEED)]
-    state = np.concatenate(states)
+    state = states_of(scenario, sample(scenario, TIMED, PILOT_SEED))
     began = time.perf_counter()
     advance(scenario, kernel, state, pilot.local_tolerance, scenario.save_times_h)
     each_s = (time.perf_counter() - began) / state.shape[0]

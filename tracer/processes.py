@@ -29,7 +29,7 @@ from tracer.kernels.build import cache_root
 from tracer.progress import Watcher
 from tracer.records import Chunk
 from tracer.scenario import Scenario
-from tracer.stopping import Stopped
+from tracer.stopping import WorkersLost
 from tracer.worker import enlist, packed, ready, work
 
 COMMAND = (sys.executable, "-P", "-c", "from tracer.processes import serve; serve()")
@@ -99,7 +99,7 @@ class Processes:
 
         Raises
         ------
-        Stopped
+        WorkersLost
             When `DEATHS` workers have died with the same span in hand.
         """
         fresh, again = iter(spans), deque[Span]()
@@ -140,7 +140,7 @@ class Processes:
         for (first, stop), deaths in self._deaths.items():
             if deaths >= DEATHS:
                 how = ended_by(worker.process.returncode)
-                raise Stopped(f"{deaths} worker processes died on particles {first} to {stop - 1}, the last {how}")
+                raise WorkersLost(f"{deaths} worker processes died on particles {first} to {stop - 1}, the last {how}")
         self._crew[self._crew.index(worker)] = self._started()
         return worker.spans
 

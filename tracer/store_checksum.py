@@ -49,7 +49,7 @@ def fletcher32(data: NDArray[np.generic]) -> bytes:
 
 
 def _sums(words: NDArray[np.uint16]) -> tuple[int, int]:
-    """Both sums, over whole rows, from the sums of rows and of columns: single precision is exact here, and quickest."""
+    """Both sums over whole rows, from those of rows and of columns; single precision is exact here, and quickest."""
     if not hasattr(_scratch, "words"):
         _scratch.words = np.empty(PIECE, np.float32)
     exact = _scratch.words[: words.size]

@@ -14,9 +14,15 @@ from tracer.records import GROUPS, Column, flag_word
 from tracer.scenario import Scenario
 from tracer.status import Cause
 from tracer.store_attrs import DIGEST, digest, iso_utc
+from tracer.store_checksum import fletcher32
+from tracer.store_labels import LABELS, labels_digest
+from tracer.store_overlay import Overlay
 
-ROWS = 4096  # particles in a chunk of a column; batches of a multiple of it fill whole chunks
+ROWS = 4096  # particles in a chunk of a column, at most
+LEAST_ROWS, STRIPES = 64, 64  # a run of few particles is cut into about so many stripes, but not of fewer rows
+STRIPE_BYTES = 2**25
 TRACK_CHUNK_BYTES = 2**20
+STATE_COLUMNS = len(GROUPS["track"])
 LIBVER = ("v110", "v110")  # every piece of metadata carries a checksum; HDF5 1.10 (2016) and later read it
 
 TIME = Column("", "time", "", "run time", "f8")  # its unit holds the start
@@ -24,11 +30,33 @@ PARTICLE_INDEX = Column("", "particle_index", "1", "index of the particle in the
 SINGLE_QUANTUM = float(np.finfo(np.float32).eps)
 
 
+def stripe_rows(count: int, n_time: int) -> int:
+    """Particles of a stripe: those whose columns share a chunk, are written together and are logged as one.
+
+    A power of two, unless one stripe holds all: small enough that stopping a run costs a small part of it and that
+    a stripe's tracks fit into `STRIPE_BYTES`.
+    """
+    return min(count, _power_of_two(max(count // STRIPES, LEAST_ROWS)), _fitting(n_time))
+
+
+def most_rows(scenario: Scenario) -> int:
+    """The most particles that a chunk in memory should hold: those of a stripe when there are many."""
+    return _fitting(scenario.save_times_h.size)
+
+
+def _fitting(n_time: int) -> int:
+    return min(_power_of_two(max(STRIPE_BYTES // (8 * STATE_COLUMNS * max(n_time, 1)), 1)), ROWS)
+
+
 def track_chunk(count: int, n_time: int, itemsize: int) -> tuple[int, int]:
-    """Chunk of a track: whole rows where they fit into `TRACK_CHUNK_BYTES`, their number a divisor of `ROWS`."""
+    """Chunk of a track: whole rows where they fit into `TRACK_CHUNK_BYTES`, their number a divisor of a stripe's."""
     columns = min(n_time, TRACK_CHUNK_BYTES // itemsize)
-    rows = min(ROWS, max(1, TRACK_CHUNK_BYTES // (columns * itemsize)))
-    return min(count, 2 ** (rows.bit_length() - 1)), columns
+    rows = _power_of_two(max(1, TRACK_CHUNK_BYTES // (columns * itemsize)))
+    return min(rows, stripe_rows(count, n_time)), columns
+
+
+def _power_of_two(most: int) -> int:
+    return 1 << (most.bit_length() - 1)
 
 
 def groups_of(scenario: Scenario) -> dict[str, tuple[Column, ...]]:
@@ -39,8 +67,8 @@ def groups_of(scenario: Scenario) -> dict[str, tuple[Column, ...]]:
 def build_skeleton(file: h5py.File, scenario: Scenario, attrs: Mapping[str, Any], allocate: bool) -> None:
     """Make everything but the numbers; `allocate` takes the space of all chunks at once."""
     count, n_time = scenario.count, scenario.save_times_h.size
-    write_attrs(file, {**attrs, "complete": False})
-    index = create(file, PARTICLE_INDEX, (count,), (min(count, ROWS),), allocate)
+    rows = stripe_rows(count, n_time)
+    index = create(file, PARTICLE_INDEX, (count,), (rows,), allocate)
     index.make_scale(PARTICLE_INDEX.name)
     scales = [index]
     if n_time:
@@ -56,7 +84,7 @@ def build_skeleton(file: h5py.File, scenario: Scenario, attrs: Mapping[str, Any]
                 single = scenario.output.tracks == "single"
                 dataset = _create_track(parent, column, (count, n_time), single, allocate)
             else:
-                dataset = create(parent, column, (count,), (min(count, ROWS),), allocate)
+                dataset = create(parent, column, (count,), (rows,), allocate)
             for axis, scale in zip(dataset.dims, scales):
                 axis.attach_scale(scale)
     if n_time:
@@ -64,16 +92,40 @@ def build_skeleton(file: h5py.File, scenario: Scenario, attrs: Mapping[str, Any]
     _label_codes(file, scenario)
     for number, (driver, unit, use) in enumerate(drivers_of(scenario.field)):
         _create_driver(file.create_group(f"driver/{number}"), driver, unit, use, allocate)
+    write_attrs(file, {**attrs, "complete": False, LABELS: labels_digest(file)})
+
+
+def skeleton(scenario: Scenario, attrs: Mapping[str, Any]) -> Overlay:
+    """The file without the columns of particles: their chunks have their places, and nothing stands there yet."""
+    made = Overlay(ignored=_fills(scenario))
+    with h5py.File(made, "w", libver=LIBVER, locking=False) as file:
+        build_skeleton(file, scenario, attrs, allocate=True)
+        fill_coordinates(file, scenario)
+    return made
+
+
+def amend(file: Overlay, attrs: Mapping[str, Any]) -> None:
+    """Set root attributes of a file in an overlay."""
+    with h5py.File(file, "r+", libver=LIBVER, locking=False) as opened:
+        write_attrs(opened, attrs)
+
+
+def _fills(scenario: Scenario) -> list[np.ndarray]:
+    """What HDF5 writes into the chunks of empty columns when it makes them."""
+    count, n_time = scenario.count, scenario.save_times_h.size
+    rows: tuple[int, ...] = (stripe_rows(count, n_time),)
+    shapes = {(rows, column.dtype) for column in (PARTICLE_INDEX, *GROUPS["particle"], *GROUPS["end"])}
+    if n_time:
+        width = "f4" if scenario.output.tracks == "single" else "f8"
+        shapes.add((track_chunk(count, n_time, np.dtype(width).itemsize), width))
+    filled = [np.full(shape, np.nan if dtype.startswith("f") else 0, dtype) for shape, dtype in sorted(shapes)]
+    return [np.frombuffer(data.tobytes() + fletcher32(data), np.uint8) for data in filled]
 
 
 def fill_coordinates(file: h5py.File, scenario: Scenario) -> None:
-    """Write the numbers that are known before any particle is traced."""
+    """Write the numbers that belong to no particle."""
     if scenario.save_times_h.size:
         file["time"][:] = scenario.save_times_h
-    step = 256 * ROWS
-    for first in range(0, scenario.count, step):
-        stop = min(first + step, scenario.count)
-        file["particle_index"][first:stop] = np.arange(first, stop)
     for number, (driver, _, _) in enumerate(drivers_of(scenario.field)):
         for name in ("start_h", "value", "slope"):
             file[f"driver/{number}/{name}"][:] = getattr(driver, name)
@@ -108,7 +160,7 @@ def create(
 
 
 def label(item: h5py.Dataset | h5py.Group, **texts: str) -> None:
-    """Text for human readers; nothing here is read back, for such text has no checksum."""
+    """Text for human readers; nothing here is read back."""
     for name, text in texts.items():
         item.attrs[name] = text
 

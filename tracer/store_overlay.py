@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import os
 from collections.abc import Collection
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -44,29 +45,33 @@ class Overlay(io.RawIOBase):
         return [(begin, self._bytes(begin, stop)) for begin, stop in merged if begin < self.size]
 
     def readable(self) -> bool:
+        """It is."""
         return True
 
     def writable(self) -> bool:
+        """It is."""
         return True
 
     def seekable(self) -> bool:
+        """It is."""
         return True
 
     def seek(self, offset: int, whence: int = os.SEEK_SET) -> int:
+        """See io.RawIOBase, as for the methods below."""
         self._at = offset + {os.SEEK_SET: 0, os.SEEK_CUR: self._at, os.SEEK_END: self.size}[whence]
         return self._at
 
-    def tell(self) -> int:
+    def tell(self) -> int:  # noqa: D102
         return self._at
 
-    def readinto(self, buffer) -> int:  # type: ignore[no-untyped-def]
+    def readinto(self, buffer: Any) -> int:  # noqa: D102
         view = memoryview(buffer)
         found = self._bytes(self._at, min(self._at + len(view), self.size))
         view[: len(found)] = found
         self._at += len(found)
         return len(found)
 
-    def write(self, data) -> int:  # type: ignore[no-untyped-def]
+    def write(self, data: Any) -> int:  # noqa: D102
         octets = np.frombuffer(data, np.uint8)
         begin, self._at = self._at, self._at + octets.size
         self.size = max(self.size, self._at)
@@ -75,7 +80,7 @@ class Overlay(io.RawIOBase):
             self._put(begin, octets.tobytes())
         return octets.size
 
-    def truncate(self, size: int | None = None) -> int:
+    def truncate(self, size: int | None = None) -> int:  # noqa: D102
         self.size = self._at if size is None else size
         return self.size
 

@@ -18,6 +18,7 @@ from fields.drivers import Driver
 from fields.errors import InputError
 from tracer.records import GROUPS, Column, Result
 from tracer.store_attrs import DIGEST, FORMAT, FORMAT_VERSION, digest, plain_value
+from tracer.store_labels import LABELS, labels_digest
 
 SIGNATURE = b"\x89HDF\r\n\x1a\n"
 TABLE_HEADER = re.compile(r"^\s*\[{1,2}\s*[A-Za-z_\"'][^\[\]]*\]{1,2}\s*(#.*)?$", re.MULTILINE)
@@ -57,6 +58,8 @@ def open(path: str | os.PathLike[str]) -> Result:
     with _readable(path, "") as file:
         attrs = _checked_attrs(file, str(path))
         count = _checked_shapes(file, str(path))
+        if attrs.get(LABELS) != labels_digest(file):
+            raise InputError("its labels were changed after it was made", AGAIN, key=LABELS, file=str(path))
         time = np.asarray(_read(path, file, "time")) if "time" in file else np.empty(0)
         drivers = tuple(_driver(path, file, n, **texts) for n, texts in enumerate(json.loads(attrs["drivers"])))
     kept = {name: columns if time.size or name != "track" else () for name, columns in GROUPS.items()}

@@ -1,10 +1,15 @@
-"""Writing a trajectory file: under another name until it is whole, then moved into place."""
+"""Writing a trajectory file: under another name until it is whole, then moved into place; resumed when broken off.
+
+HDF5 makes the skeleton in memory, before there are any numbers, and is closed for good: a process that dies while
+HDF5 holds a file open leaves an unreadable one. The columns of a stripe of particles are then put at the places of
+their chunks, and a line of the log says so. The last change to the skeleton is logged before it is made. So whatever
+the moment of a kill, what stands in the log can be taken up again, and the finished file has the same bits.
+"""
 
 from __future__ import annotations
 
-import fcntl
+import base64
 import os
-import shutil
 from collections.abc import Mapping
 from contextlib import suppress
 from pathlib import Path
@@ -15,145 +20,173 @@ import h5py
 import numpy as np
 
 from fields.errors import InputError
-from tracer.records import Chunk
+from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
+from tracer.stopping import Stopped
 from tracer.store_attrs import provenance
-from tracer.store_layout import LIBVER, build_skeleton, fill_coordinates, groups_of, padded_bytes, write_attrs
-from tracer.store_reader import kind
+from tracer.store_identity import identity, refuse_other
+from tracer.store_layout import amend, groups_of, skeleton, stripe_rows
+from tracer.store_log import Log, reserve, write_at
+from tracer.store_output import LOG, PART, check_output, check_replaced, locked, publish, room_for, sync_directory
+from tracer.store_overlay import Overlay
+from tracer.store_places import Stripes, places_of
+from tracer.store_reader import open as read
 
-PART = ".part"
-MEASURED_WHOLE = 2**20  # bytes of numbers
-BYTES_PER_INDEXED_CHUNK = 16  # address, size and filter mask in the fixed array by which HDF5 finds a chunk
-
-
-def expected_bytes(scenario: Scenario) -> int:
-    """Size of the scenario's trajectory file, measured on a skeleton in memory."""
-    empty, sizes = _skeleton_bytes(scenario, allocate=False)
-    numbers = sum(size for size, _ in sizes)
-    if numbers < MEASURED_WHOLE:  # there the odd bytes by which HDF5 rounds count
-        return _skeleton_bytes(scenario, allocate=True)[0]
-    return empty + numbers + sum(chunks for _, chunks in sizes if chunks > 1) * BYTES_PER_INDEXED_CHUNK
-
-
-def _skeleton_bytes(scenario: Scenario, allocate: bool) -> tuple[int, list[tuple[int, int]]]:
-    """Size of a skeleton, and what `padded_bytes` says of each of its datasets."""
-    sizes: list[tuple[int, int]] = []
-    with h5py.File("memory", "w", driver="core", block_size=1, backing_store=False, libver=LIBVER) as file:
-        build_skeleton(file, scenario, provenance(scenario), allocate)
-        if allocate:  # then as the writer goes on
-            fill_coordinates(file, scenario)
-            file.flush()
-            write_attrs(file, {"complete": True})
-        file.flush()
-        file.visititems(lambda _, item: sizes.append(padded_bytes(item)) if isinstance(item, h5py.Dataset) else None)
-        return file.id.get_filesize(), sizes
-
-
-def size_text(size: float) -> str:
-    """A number of bytes to three digits: ``12.3 GB``."""
-    for unit in ("bytes", "kB", "MB", "GB", "TB", "PB", "EB", "ZB"):
-        if size < 999.5 or unit == "ZB":
-            break
-        size /= 1000.0
-    return f"{size:.3g} {unit}"
-
-
-def check_output(path: str | os.PathLike[str], scenario: Scenario, overwrite: bool = False) -> None:
-    """See that the file of a scenario can be written at `path`. Writes nothing.
-
-    Raises
-    ------
-    InputError
-        When it exists and `overwrite` is false, is no regular file or a run file; when its directory is missing or
-        read-only; when the disk has less room than the file takes.
-    """
-    target, name = Path(path), str(path)
-    if os.path.lexists(target):
-        if not target.is_file():
-            raise InputError("exists and is not a file", "another name for the output", file=name)
-        if not overwrite:
-            raise InputError("exists", "another name for the output, or --overwrite to replace it", file=name)
-        if kind(target) == "run file":
-            raise InputError("is a run file, which no output replaces", "another name for the output", file=name)
-    parent = target.parent
-    if not parent.is_dir():
-        raise InputError(f"the directory {parent} does not exist", "an existing directory", file=name)
-    if not os.access(parent, os.W_OK | os.X_OK):
-        raise InputError(f"the directory {parent} is read-only", "a directory that can be written", file=name)
-    needed, free = expected_bytes(scenario), shutil.disk_usage(parent).free
-    with suppress(OSError):
-        free += os.stat(str(path) + PART).st_blocks * 512  # a leftover gives its room back
-    if free < needed:
-        remedy = 'another disk, fewer particles, a larger every_min, or tracks = "single"'
-        raise InputError(f"the file takes {size_text(needed)}, the disk has {size_text(free)} free", remedy, file=name)
+LOG_FORMAT = "driftrose log 1"
+SYNC_BYTES = 2**26
+Span = tuple[int, int]
 
 
 class TrajectoryWriter:
     """Context manager that writes one trajectory file, chunk by chunk.
 
-    It stands under `path` + ``.part``, locked, with the space of all datasets taken from the start; `finish`
-    completes it and moves it into place. Left without `finish`, by an exception or not, the ``.part`` is removed.
+    It stands under `path` + ``.part``, locked, with the room for all datasets taken from the start, and a log beside
+    it; `finish` completes it and moves it into place. Left earlier, it is kept for another run to resume when
+    anything is in it or the process was told to stop.
 
     Parameters
     ----------
     path : path-like
     scenario : Scenario
-    attrs : mapping
-        Root attributes beyond `tracer.store_attrs.provenance`.
+    attrs : mapping, optional
+        Root attributes beyond `tracer.store_attrs.provenance`. Without them `begin` must be called.
     overwrite : bool
-        Replace an existing file, at the final move.
+        Replace an existing file, at the final move, and what an interrupted run has left, at once.
+    resume : bool
+        Go on with what an interrupted run has left.
+    program : str
+        Hash of the code that computes the chunks; a run is not resumed with another.
+
+    Attributes
+    ----------
+    begun : dict or None
+        The attributes with which the file was begun, by this run or the interrupted one; None before `begin`.
 
     Raises
     ------
     InputError
-        See `check_output`; also when another run is writing the same file.
+        See `check_output` and `tracer.store_identity.refuse_other`; also when another run is writing the same file.
+    Stopped
+        When the disk is full.
     """
 
     def __init__(
-        self, path: str | os.PathLike[str], scenario: Scenario, attrs: Mapping[str, Any], overwrite: bool = False
+        self,
+        path: str | os.PathLike[str],
+        scenario: Scenario,
+        attrs: Mapping[str, Any] | None = None,
+        overwrite: bool = False,
+        *,
+        resume: bool = False,
+        program: str = "",
     ) -> None:
-        check_output(path, scenario, overwrite)
+        check_output(path, scenario, overwrite, resume)
         self.path = Path(path)
-        self.part = Path(str(path) + PART)
+        self.part = Path(f"{path}{PART}")
+        self.begun: dict[str, Any] | None = None
         self._scenario = scenario
-        self._attrs = dict(attrs)
+        self._attrs = attrs
         self._overwrite = overwrite
-        self._written: list[tuple[int, int]] = []
-        self._file: h5py.File | None = None
-        self._lock = -1
+        self._resume = resume
+        self._program = program
+        self._needed = 0
+        self._file = -1
+        self._log: Log | None = None
+        self._stripes: Stripes | None = None
+        self._done: dict[int, str] = {}
+        self._partly: dict[int, Gathered] = {}
+        self._unsynced = 0
+        self._finished = False
 
     def __enter__(self) -> Self:
-        self._lock = self._locked()
+        self._file = locked(self.path, self._resume)
         try:
-            # The lock is ours: HDF5 would empty a file that another run is writing before it tried its own.
-            self._file = h5py.File(self.part, "w", libver=LIBVER, locking=False)
-            attrs = {**provenance(self._scenario), **self._attrs}
-            build_skeleton(self._file, self._scenario, attrs, allocate=True)
-            fill_coordinates(self._file, self._scenario)
-            self._file.flush()
-        except BaseException:
-            self._discard()
+            if self._resume:
+                self._take_up()
+            if self.begun is None and self._attrs is not None:
+                self.begin(self._attrs)
+        except BaseException as error:
+            self._leave(error)
             raise
         return self
 
     def __exit__(
         self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
     ) -> None:
-        self._discard()
+        self._leave(error)
+
+    def begin(self, attrs: Mapping[str, Any]) -> None:
+        """Make the file and its log; `attrs` as for the class."""
+        made = skeleton(self._scenario, {**provenance(self._scenario), **attrs})
+        self._needed = made.size
+        header = {
+            "format": LOG_FORMAT,
+            "identity": identity(self._scenario, self._program),
+            "attrs": dict(attrs),
+            "size": made.size,
+            "overwrite": self._overwrite,
+        }
+        count = self._scenario.count
+        stripes = -(-count // stripe_rows(count, self._scenario.save_times_h.size))
+        with self._room():
+            try:
+                reserve(self._file, made.size)
+                for offset, data in made.changes():
+                    write_at(self._file, [data], offset)
+                os.fsync(self._file)
+                self._log = Log.create(Path(f"{self.path}{LOG}"), header, stripes)
+            except OSError:
+                with suppress(OSError):
+                    Path(f"{self.path}{LOG}").unlink()
+                os.ftruncate(self._file, 0)  # gives the room back; a resumed run begins anew
+                raise
+            sync_directory(self.path)
+        self._opened(dict(attrs))
+
+    def stopped(self) -> str:
+        """What to say of a run that was stopped."""
+        kept = f"; {self.part} keeps them" if self._done else ""
+        after = f"stopped after {self.written} of {self._scenario.count} particles"
+        return f"{after}{kept}; the same command with --resume goes on"
+
+    def result(self) -> Result:
+        """The finished file."""
+        return read(self.path)
+
+    @property
+    def written(self) -> int:
+        """Particles whose columns stand in the file."""
+        stripes = self._stripes
+        return 0 if stripes is None else sum(stop - first for first, stop in map(stripes.span, self._done))
+
+    def missing(self) -> list[Span]:
+        """The particles that are not in the file yet, as spans, rising."""
+        stripes = self._begun_stripes()
+        spans: list[Span] = []
+        for stripe in stripes.holding(0, stripes.count):
+            if stripe not in self._done:
+                first, stop = stripes.span(stripe)
+                spans[-1:] = [(spans[-1][0], stop)] if spans and spans[-1][1] == first else [*spans[-1:], (first, stop)]
+        return spans
 
     def write(self, chunk: Chunk) -> None:
-        """Put the columns of some consecutive particles at their place; chunks may come in any order."""
-        file = self._opened()
-        stop = chunk.first + chunk.end["cause"].size
-        for group, columns in groups_of(self._scenario).items():
-            values: dict[str, np.ndarray] = getattr(chunk, group)
-            for column in columns:
-                dataset = file[f"{group}/{column.name}"]
-                data = stored(np.asarray(values[column.name]), column.name, dataset.dtype)
-                if data.shape != (stop - chunk.first, *dataset.shape[1:]):
-                    raise ValueError(f"{group}/{column.name} of particles {chunk.first} to {stop}: shape {data.shape}")
-                dataset[chunk.first : stop] = data
-        self._written.append((chunk.first, stop))
+        """Put the columns of some consecutive particles at their place; chunks may come in any order and length."""
+        stripes = self._begun_stripes()
+        columns = self._columns(chunk)
+        first, stop = chunk.first, chunk.first + chunk.end["cause"].size
+        for stripe in stripes.holding(first, stop):
+            low, high = stripes.span(stripe)
+            part = slice(max(low, first) - first, min(high, stop) - first)
+            if stripe in self._done:
+                raise ValueError(f"particle {part.start + first} was written before")
+            rows = {name: data[part] for name, data in columns.items()}
+            if part.stop - part.start < high - low:
+                gathered = self._partly.setdefault(stripe, Gathered(high - low))
+                gathered.add(part.start + first - low, rows)
+                if not gathered.whole:
+                    continue
+                rows = self._partly.pop(stripe).columns
+            self._put(stripe, rows)
 
     def finish(self, extra_attrs: Mapping[str, Any] | None = None) -> Path:
         """Add attributes, mark the file complete, bring it to the disk and move it into place.
@@ -163,89 +196,134 @@ class TrajectoryWriter:
         InputError
             When a file has come to stand at the path meanwhile; the finished one then stays under its ``.part`` name.
         """
-        file = self._opened()
-        self._check_whole()
-        write_attrs(file, {**(extra_attrs or {}), "complete": True})
-        file.close()
-        self._file = None
-        os.fsync(self._lock)
-        try:
-            publish(self.part, self.path, self._overwrite)
-        finally:
-            os.close(self._lock)
-            self._lock = -1
+        if missing := self.missing():
+            raise ValueError(f"{self.written} of {self._scenario.count} particles were written, not {missing[0][0]}")
+        log = self._begun_log()
+        with self._room():
+            os.fsync(self._file)
+            if not isinstance(log.records[-1], dict) or "close" not in log.records[-1]:
+                changed = Overlay(self._file)
+                amend(changed, {**(extra_attrs or {}), "complete": True})
+                changes = [[offset, base64.b85encode(data).decode()] for offset, data in changed.changes()]
+                log.append({"close": changes, "size": changed.size})
+                log.sync()
+            closing = log.records[-1]
+            os.ftruncate(self._file, closing["size"])
+            for offset, text in closing["close"]:
+                write_at(self._file, [base64.b85decode(text)], offset)
+            os.fsync(self._file)
+        publish(self.part, self.path, self._overwrite or bool(log.records[0]["overwrite"]))
+        self._finished = True
+        Path(f"{self.path}{LOG}").unlink()
         return self.path
 
-    def _opened(self) -> h5py.File:
-        if self._file is None:
+    def _take_up(self) -> None:
+        """Read what an interrupted run has left. Without a header it got nowhere, and all begins anew."""
+        log = Log.read(Path(f"{self.path}{LOG}"))
+        if log is None:
+            check_replaced(self.path, self._overwrite)
+            os.ftruncate(self._file, 0)
+            return
+        self._log = log
+        header = log.records[0]
+        check_replaced(self.path, self._overwrite or bool(header["overwrite"]))
+        refuse_other(header["identity"], identity(self._scenario, self._program), str(self.part))
+        self._needed = header["size"]
+        if os.fstat(self._file).st_size < self._needed:
+            raise self._damaged()
+        try:
+            self._opened(header["attrs"])
+        except (OSError, RuntimeError, KeyError, ValueError) as error:
+            raise self._damaged() from error
+        stripes = self._begun_stripes()
+        for record in log.records[1:]:
+            if isinstance(record, list) and stripes.stands(*record):
+                self._done[record[0]] = record[1]
+
+    def _damaged(self) -> InputError:
+        return InputError("damaged, cannot be resumed", "--overwrite to start again", file=str(self.part))
+
+    def _opened(self, attrs: dict[str, Any]) -> None:
+        with h5py.File(self.part, "r", locking=False) as file:
+            places = places_of(file)
+        count, n_time = self._scenario.count, self._scenario.save_times_h.size
+        self._stripes = Stripes(self._file, places, stripe_rows(count, n_time))
+        self.begun = attrs
+
+    def _columns(self, chunk: Chunk) -> dict[str, np.ndarray]:
+        """The columns of a chunk in the types and under the names of the datasets."""
+        size = chunk.end["cause"].size
+        values = {"particle_index": np.arange(chunk.first, chunk.first + size)}
+        for group, columns in groups_of(self._scenario).items():
+            values |= {f"{group}/{column.name}": getattr(chunk, group)[column.name] for column in columns}
+        places = self._begun_stripes().places
+        for name, data in values.items():
+            if data.shape != (size, *places[name].shape[1:]):
+                raise ValueError(f"{name} of particles {chunk.first} to {chunk.first + size}: shape {data.shape}")
+        return {
+            name: stored(np.asarray(data), name.rpartition("/")[2], places[name].dtype) for name, data in values.items()
+        }
+
+    def _put(self, stripe: int, rows: Mapping[str, np.ndarray]) -> None:
+        with self._room():
+            digest = self._begun_stripes().write(stripe, rows)
+            self._begun_log().append([stripe, digest])
+        self._done[stripe] = digest
+
+    def _room(self) -> Any:
+        return room_for(self.path, self._needed)
+
+    def _begun_stripes(self) -> Stripes:
+        if self._stripes is None:
             raise ValueError("the writer is not open")
-        return self._file
+        return self._stripes
 
-    def _check_whole(self) -> None:
-        expected = 0
-        for first, stop in sorted(self._written):
-            if first != expected:
-                raise ValueError(f"particle {min(first, expected)} was not written exactly once")
-            expected = stop
-        if expected != self._scenario.count:
-            raise ValueError(f"{expected} of {self._scenario.count} particles were written")
+    def _begun_log(self) -> Log:
+        if self._log is None:
+            raise ValueError("the writer is not open")
+        return self._log
 
-    def _locked(self) -> int:
-        name = str(self.path)
-        try:
-            handle = os.open(self.part, os.O_RDWR | os.O_CREAT | os.O_CLOEXEC, 0o666)
-        except PermissionError as error:
-            remedy = "a directory that can be written"
-            raise InputError(f"the directory {self.path.parent} is read-only", remedy, file=name) from error
-        except FileNotFoundError as error:
-            raise InputError(f"cannot be made in {self.path.parent}", "another directory", file=name) from error
-        try:
-            fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except BlockingIOError as error:
-            os.close(handle)
-            raise InputError("another run is writing it", "wait for that run, or another name", file=name) from error
-        except OSError:
-            pass  # a file system without locks
-        return handle
+    def _leave(self, error: BaseException | None) -> None:
+        """Let go of the files; remove them unless there is something to resume, or the process was told to stop."""
+        if self._log is not None:
+            self._log.close()
+        told = isinstance(error, Stopped) or not (error is None or isinstance(error, Exception))
+        if not (self._finished or self._done or told or self._resume):
+            for path in (Path(f"{self.path}{LOG}"), self.part):
+                with suppress(OSError):
+                    path.unlink()
+        if self._file >= 0:
+            os.close(self._file)
+            self._file = -1
 
-    def _discard(self) -> None:
-        """Remove what is not finished."""
-        if self._file is not None:
-            with suppress(Exception):  # a full disk fails here once more
-                self._file.close()
-            self._file = None
-        if self._lock >= 0:
-            with suppress(OSError):
-                self.part.unlink()
-            os.close(self._lock)
-            self._lock = -1
+
+class Gathered:
+    """Rows of a stripe that come in pieces."""
+
+    def __init__(self, size: int) -> None:
+        self.columns: dict[str, np.ndarray] = {}
+        self._there = np.zeros(size, bool)
+
+    @property
+    def whole(self) -> bool:
+        """Whether all have come."""
+        return bool(self._there.all())
+
+    def add(self, first: int, rows: Mapping[str, np.ndarray]) -> None:
+        """Rows from `first` on, counted within the stripe."""
+        size = next(iter(rows.values())).shape[0]
+        if self._there[first : first + size].any():
+            raise ValueError(f"row {first} of a stripe was written before")
+        for name, data in rows.items():
+            if name not in self.columns:
+                self.columns[name] = np.empty((self._there.size, *data.shape[1:]), data.dtype)
+            self.columns[name][first : first + size] = data
+        self._there[first : first + size] = True
 
 
 def stored(data: np.ndarray, name: str, dtype: np.dtype[Any]) -> np.ndarray:
     """`data` in the type of its dataset; local time stays below 24 h where single precision rounds it up."""
-    converted = data.astype(dtype)
+    converted = data.astype(dtype, copy=False)
     if name == "mlt_h" and dtype.itemsize < data.dtype.itemsize:
         converted[converted >= 24.0] = 0.0
     return converted
-
-
-def publish(part: Path, path: Path, overwrite: bool) -> None:
-    """Move a finished file into place in one step, never over a file unless `overwrite`."""
-    taken = InputError("exists by now", f"the finished result is in {part}; move it", file=str(path))
-    if overwrite:
-        os.replace(part, path)
-    else:
-        try:
-            os.link(part, path)  # unlike a rename, it fails when the name is taken
-            part.unlink()
-        except FileExistsError:
-            raise taken from None
-        except OSError:  # a file system without hard links
-            if os.path.lexists(path):
-                raise taken from None
-            os.rename(part, path)
-    directory = os.open(path.parent, os.O_RDONLY)
-    try:
-        os.fsync(directory)
-    finally:
-        os.close(directory)

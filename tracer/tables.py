@@ -15,6 +15,14 @@ def closing(result: Result) -> dict[str, Any]:
     """How a run ended: causes, measured error, time, memory and disk, as plain values."""
     causes = np.bincount(np.asarray(result.end["cause"]), minlength=len(Cause))
     attrs, work = result.attrs, result.work
+    took = {}
+    if work:  # none when the file was complete before
+        took = {
+            "steps_per_particle": (work["accepted"] + work["rejected"]) / max(work["particles"], 1),
+            "rejected_share": work["rejected"] / max(work["accepted"] + work["rejected"], 1.0),
+            "seconds": work["wall_s"],
+            "particles_per_s": work["particles_per_s"],
+        }
     return {
         "particles": result.count,
         "ended": {cause.word: int(causes[cause]) for cause in Cause if causes[cause]},
@@ -26,10 +34,7 @@ def closing(result: Result) -> dict[str, Any]:
             "100": float(attrs["end_error_100_re"]),
             "sample": int(attrs["end_error_sample"]),
         },
-        "steps_per_particle": (work["accepted"] + work["rejected"]) / max(result.count, 1),
-        "rejected_share": work["rejected"] / max(work["accepted"] + work["rejected"], 1.0),
-        "seconds": work["wall_s"],
-        "particles_per_s": work["particles_per_s"],
+        **took,
         "memory_bytes": _peak_memory(),
     }
 

@@ -23,8 +23,9 @@ from tracer.records import Chunk
 from tracer.scenario import Scenario
 from tracer.store_attrs import processor, versions
 
-KEPT = 4  # runs that a worker holds: a client that died did not dismiss its own
-PACKAGES = tuple(Path(package.__file__ or "").parent for package in (fields, tracer))
+KEPT = 16  # runs that a worker holds: a client that died did not dismiss its own
+FIELDS, TRACER = (Path(package.__file__ or "").parent for package in (fields, tracer))
+DECIDING = ("adiabatic.py", "integrate.py", "population.py", "scenario.py", "status.py")
 
 
 class NotHeld(LookupError):  # noqa: N818 - nothing went wrong: the worker has been started anew
@@ -70,12 +71,10 @@ def identity(scenario: Scenario) -> dict[str, str]:
 
 
 def sources_digest(more: Iterable[str]) -> str:
-    """Hash of this program's sources and of the files of a user's models."""
+    """Hash of those sources of this program that numbers pass through, and of the files of a user's models."""
     digest = hashlib.sha256()
-    for path in (
-        *(path for package in PACKAGES for path in sorted(package.rglob("*.py"))),
-        *sorted(set(map(Path, more))),
-    ):
+    whole = [path for folder in (FIELDS, TRACER / "kernels") for path in sorted(folder.rglob("*.py"))]
+    for path in (*whole, *(TRACER / name for name in DECIDING), *sorted(set(map(Path, more)))):
         digest.update(path.name.encode() + b"\0" + path.read_bytes())
     return digest.hexdigest()
 

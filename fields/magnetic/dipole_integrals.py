@@ -20,7 +20,7 @@ from fields.units import Floats
 
 Indices = NDArray[np.intp]
 
-BLOCK = 4096  # points integrated at once: bounds the memory of a long array
+BLOCK = 4096  # lines integrated at once, of the fewest nodes: bounds the memory of a long array
 LEAST_POINTS = 32
 NEWTON_STEPS = 8  # quadratic from a start within a factor 1.5: five reach the last digit
 DIGITS = 18.0  # exponent of the wanted quadrature error, natural units
@@ -47,6 +47,14 @@ def mirror_latitude(cot2: Floats) -> tuple[Floats, Floats]:
     return np.asarray(-np.expm1(-u)), np.asarray(np.exp(-u))
 
 
+def node_doublings(x2m: Floats, c2m: Floats) -> NDArray[np.int64]:
+    """How often `LEAST_POINTS` nodes must be doubled to serve each mirror point, shape (n,)."""
+    # the integrand's nearest singularity lies asinh(sqrt(c2m / x2m)) off the real axis
+    width = np.arcsinh(np.sqrt(c2m / np.maximum(x2m, 1e-300)))
+    wanted = 2.5 * DIGITS / (4.0 * np.minimum(width, 1.0))
+    return np.asarray(np.ceil(np.log2(np.maximum(wanted / LEAST_POINTS, 1.0))), dtype=np.int64)
+
+
 def latitude_nodes(x2m: Floats, c2m: Floats) -> tuple[Floats, Floats, Floats, Floats]:
     """Midpoint nodes in theta along the lines with mirror points `x2m`, `c2m` of shape (n,).
 
@@ -56,9 +64,7 @@ def latitude_nodes(x2m: Floats, c2m: Floats) -> tuple[Floats, Floats, Floats, Fl
         ``c2`` is cos^2 of latitude and ``above`` its excess over the mirror point's; ``path`` is sqrt(1 + 3 x^2);
         ``depth`` is the smooth part of sqrt(1 - B/B_m), which equals ``sqrt(above) depth``.
     """
-    # the integrand's nearest singularity lies asinh(sqrt(c2m / x2m)) off the real axis
-    width = np.arcsinh(np.sqrt(c2m.min() / max(x2m.max(), 1e-300)))
-    count = int(max(LEAST_POINTS, np.ceil(2.5 * DIGITS / (4.0 * min(width, 1.0)))))
+    count = LEAST_POINTS << int(node_doublings(x2m, c2m).max())
     cos2_theta = np.cos((np.arange(count) + 0.5) * (np.pi / 2 / count)) ** 2
     cm = c2m[:, None]
     above = x2m[:, None] * cos2_theta
@@ -108,9 +114,16 @@ def average_along(cot2: Floats, value: Callable[[Indices, Floats], Floats]) -> F
 
 
 def mirror_blocks(cot2: Floats) -> Iterator[tuple[Indices, Floats, Floats]]:
-    """(indices, x2m, c2m) by blocks of alike pitch angle, so that each needs no more nodes than its own."""
+    """(indices, x2m, c2m) by blocks that need the same number of nodes.
+
+    A line's nodes, and with them the last bits of its integrals, then depend on it alone and not on the others of the
+    call.
+    """
     x2m, c2m = mirror_latitude(cot2)
-    order = np.argsort(c2m, kind="stable")
-    for start in range(0, order.size, BLOCK):
-        part = order[start : start + BLOCK]
-        yield part, x2m[part], c2m[part]
+    doublings = node_doublings(x2m, c2m)
+    for grade in np.unique(doublings):
+        members = np.flatnonzero(doublings == grade)
+        size = max(1, BLOCK >> int(grade))
+        for start in range(0, members.size, size):
+            part = members[start : start + size]
+            yield part, x2m[part], c2m[part]

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import ArrayLike
 
+from fields import arguments
 from fields.errors import InputError
 from fields.magnetic.dipole_integrals import Indices, average_along, bounce_integrals
 from fields.magnetic.mirror_ratio import cot2_and_slope
@@ -37,13 +38,13 @@ class DipoleLines:
 
     def second_invariant(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """``k = sqrt(B0 / r) Y(y) / y``."""
-        c = np.asarray(cot2, dtype=float)
+        c = arguments.pitch(cot2)
         kappa = integrals(c)[1] * np.sqrt(1.0 + c)
-        return np.asarray(kappa * np.sqrt(self.b0 / np.asarray(r, dtype=float)) + 0.0 * np.asarray(phi))
+        return np.asarray(kappa * np.sqrt(self.b0 / arguments.distance(r)) + 0.0 * arguments.angle(phi))
 
     def cot2_at(self, k: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """Newton's method on the exact quadrature, from the fitted start."""
-        shape, (flat_k, flat_r, _) = spread(k, r, phi)
+        shape, (flat_k, flat_r, _) = spread(arguments.invariant(k), arguments.distance(r), arguments.angle(phi))
         kappa = flat_k * np.sqrt(flat_r / self.b0)
         cot2 = np.asarray(cot2_and_slope(kappa)[0])
         for _ in range(NEWTON_STEPS):
@@ -58,39 +59,48 @@ class DipoleLines:
 
     def bounce_path(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> Floats:
         """``4 r T(y)``."""
-        return np.asarray(4.0 * np.asarray(r, dtype=float) * integrals(cot2)[0] + 0.0 * np.asarray(phi))
+        T = integrals(arguments.pitch(cot2))[0]
+        return np.asarray(4.0 * arguments.distance(r) * T + 0.0 * arguments.angle(phi))
 
     def mirror_slopes(self, cot2: ArrayLike, r: ArrayLike, phi: ArrayLike) -> tuple[Floats, Floats]:
         """``d ln B_m / d ln r = -(6 T - Y) / (2 T)`` at fixed k (Schulz & Lanzerotti 1974); none in phi."""
-        T, Y = integrals(cot2)
-        slope = -(6.0 * T - Y) / (2.0 * T) / np.asarray(r, dtype=float) + 0.0 * np.asarray(phi)
+        T, Y = integrals(arguments.pitch(cot2))
+        slope = -(6.0 * T - Y) / (2.0 * T) / arguments.distance(r) + 0.0 * arguments.angle(phi)
         return np.asarray(slope), np.zeros_like(slope)
 
     def foot_field(self, r: ArrayLike, phi: ArrayLike, foot_re: float) -> Floats:
         """B at the foot: ``B0 / f^3 sqrt(4 - 3 f / r)``."""
-        radius = np.asarray(r, dtype=float)
-        if np.any(radius < foot_re):
-            remedy = f"r of at least {foot_re:.6g} R_E"
-            raise InputError("the line does not reach the foot sphere", remedy, key="r_re", value=float(radius.min()))
-        return np.asarray(self.b0 / foot_re**3 * np.sqrt(4.0 - 3.0 * foot_re / radius) + 0.0 * np.asarray(phi))
+        radius = self._above(r, foot_re)
+        return np.asarray(self.b0 / foot_re**3 * np.sqrt(4.0 - 3.0 * foot_re / radius) + 0.0 * arguments.angle(phi))
 
     def tube_volume(self, r: ArrayLike, phi: ArrayLike, foot_re: float) -> Floats:
         """``(r^4 / B0) * 2 (x - x^3 + 3 x^5 / 5 - x^7 / 7)`` with x^2 = 1 - f / r."""
-        radius = np.asarray(r, dtype=float)
+        radius = self._above(r, foot_re)
         x = np.sqrt(1.0 - foot_re / radius)
-        return np.asarray(2.0 * radius**4 / self.b0 * (x - x**3 + 0.6 * x**5 - x**7 / 7.0) + 0.0 * np.asarray(phi))
+        volume = 2.0 * radius**4 / self.b0 * (x - x**3 + 0.6 * x**5 - x**7 / 7.0)
+        return np.asarray(volume + 0.0 * arguments.angle(phi))
+
+    @staticmethod
+    def _above(r: ArrayLike, foot_re: float) -> Floats:
+        radius = arguments.distance(r)
+        if np.any(radius < foot_re):
+            problem = "no field line from there to the foot sphere"
+            raise InputError(problem, f"r of at least {foot_re:g} R_E", key="r_re", value=float(radius.min()))
+        return radius
 
     def equatorial_point(self, x: ArrayLike, y: ArrayLike, z: ArrayLike) -> tuple[Floats, Floats]:
         """``r = R^3 / rho^2`` along a dipole line."""
         px, py, pz = (np.asarray(a, dtype=float) for a in (x, y, z))
         rho2 = px**2 + py**2
+        if not np.all((rho2 > 0) & np.isfinite(rho2 + pz)):
+            raise InputError("not a place on a field line that crosses the equator", "a finite point off the axis")
         return np.asarray((rho2 + pz**2) ** 1.5 / rho2), np.asarray(np.arctan2(py, px) + 0.0 * pz)
 
     def bounce_average(
         self, density: Callable[[Floats, Floats, Floats], Floats], cot2: ArrayLike, r: ArrayLike, phi: ArrayLike
     ) -> Floats:
         """Average over both hemispheres, so `density` need not be symmetric."""
-        shape, (flat, radius, azimuth) = spread(cot2, r, phi)
+        shape, (flat, radius, azimuth) = spread(arguments.pitch(cot2), arguments.distance(r), arguments.angle(phi))
 
         def both(part: Indices, c2: Floats) -> Floats:
             distance = radius[part][:, None] * c2

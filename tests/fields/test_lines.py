@@ -16,6 +16,7 @@ from scipy.integrate import quad, solve_ivp
 from scipy.optimize import brentq
 from tolerances import bound
 
+import fields
 from fields.contract import Card, LineAverages, MagneticModel
 from fields.errors import InputError
 from fields.lines import TracedLines
@@ -345,25 +346,27 @@ def test_order_of_the_questions_changes_no_bit() -> None:
 # -------------------------------------------------------------------------------------------------------- bad input
 
 
+@pytest.mark.parametrize("lines", [TRACED, fields.Dipole(b0_nT=30000.0).lines()], ids=["traced", "dipole"])
 @pytest.mark.parametrize(
     ("question", "message"),
     [
-        (lambda: TRACED.second_invariant(-0.1, 5.0, 0.0), "cot2: not the cot"),
-        (lambda: TRACED.bounce_path(np.nan, 5.0, 0.0), "cot2: not the cot"),
-        (lambda: TRACED.bounce_path(np.inf, 5.0, 0.0), "cot2: not the cot"),
-        (lambda: TRACED.second_invariant(0.1, [5.0, 0.0], 0.0), "r_re: not a positive distance"),
-        (lambda: TRACED.second_invariant(0.1, np.nan, 0.0), "r_re: not a positive distance"),
-        (lambda: TRACED.second_invariant(0.1, 5.0, np.inf), "phi: not an angle"),
-        (lambda: TRACED.cot2_at(-1.0, 5.0, 0.0), "k: not a second invariant"),
-        (lambda: TRACED.foot_field(1.0, 0.0, 1.02), "r = 1.0: no field line .* to the foot; r of at least 1.02"),
-        (lambda: TRACED.tube_volume(1.0, 0.0, 1.02), "r = 1.0: no field line from there to the foot"),
-        (lambda: TRACED.equatorial_point(0.0, 0.0, 0.0), "not a place on a field line"),
-        (lambda: TRACED.equatorial_point(np.nan, 0.0, 1.0), "not a place on a field line"),
+        (lambda lines: lines.second_invariant(-0.1, 5.0, 0.0), "cot2: not the cot"),
+        (lambda lines: lines.bounce_path(np.nan, 5.0, 0.0), "cot2: not the cot"),
+        (lambda lines: lines.bounce_path(np.inf, 5.0, 0.0), "cot2: not the cot"),
+        (lambda lines: lines.mirror_slopes(-1.0, 5.0, 0.0), "cot2: not the cot"),
+        (lambda lines: lines.second_invariant(0.1, [5.0, 0.0], 0.0), "r_re: not a positive distance"),
+        (lambda lines: lines.second_invariant(0.1, np.nan, 0.0), "r_re: not a positive distance"),
+        (lambda lines: lines.second_invariant(0.1, 5.0, np.inf), "phi: not an angle"),
+        (lambda lines: lines.cot2_at(-1.0, 5.0, 0.0), "k: not a second invariant"),
+        (lambda lines: lines.foot_field(1.0, 0.0, 1.02), "1.0: no field line .* to the foot.*; r of at least 1.02"),
+        (lambda lines: lines.tube_volume(1.0, 0.0, 1.02), "1.0: no field line from there to the foot"),
+        (lambda lines: lines.equatorial_point(0.0, 0.0, 0.0), "not a place on a field line"),
+        (lambda lines: lines.equatorial_point(np.nan, 0.0, 1.0), "not a place on a field line"),
     ],
 )
-def test_bad_arguments_are_named(question: Callable[[], Any], message: str) -> None:
+def test_bad_arguments_are_named(lines: Any, question: Any, message: str) -> None:
     with pytest.raises(InputError, match=message):
-        question()
+        question(lines)
 
 
 def test_a_line_that_never_mirrors_is_an_error_and_no_nan() -> None:

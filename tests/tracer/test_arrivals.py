@@ -13,9 +13,9 @@ from hypothesis import strategies as st
 
 import tracer.analysis.arrivals as arrivals_module
 from fields.errors import InputError
-from tracer.analysis.arrivals import crossings
+from tracer.analysis.arrivals import DIRECTIONS, crossings, first_times
 from tracer.analysis.endings import counts_by_cause, end_rates
-from tracer.analysis.polylines import evenly_over_energy, polylines
+from tracer.analysis.polylines import evenly_over_energy, polylines, polylines_across
 from tracer.analysis.summary import sentences
 from tracer.analysis.vantage import busiest_sector, watched_radius
 from tracer.records import Result
@@ -143,6 +143,52 @@ def test_blocks_change_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
     parts = crossings(result, 5.5)
     for field in dataclasses.fields(whole):
         assert np.array_equal(getattr(whole, field.name), getattr(parts, field.name))
+
+
+@pytest.mark.parametrize("direction", DIRECTIONS)
+@pytest.mark.parametrize("rows", [7, 1000])
+def test_first_times_are_those_of_the_first_crossings(
+    direction: arrivals_module.Direction, rows: int, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    result = synthetic.drifting(n=60)
+    levels = [*np.linspace(1.5, 9.5, 17), float(result.track["r_re"][3, 5]), float(result.particle["r_re"][4])]
+    found = [crossings(result, level, direction).first() for level in levels]
+    assert sum(first.count for first in found) > 60
+    monkeypatch.setattr(arrivals_module, "BLOCK_POINTS", rows * (result.time_h.size + 2))
+    for level, first in zip(levels, found):
+        particle, time_h = first_times(result, level, direction)
+        assert np.array_equal(particle, first.particle)
+        assert np.array_equal(time_h, first.time_h)
+
+
+def test_paths_that_cannot_cross_are_the_only_ones_left_out() -> None:
+    result = synthetic.drifting(n=60)
+    for level in (3.0, 5.0, 7.0):
+        whole = polylines(result, slice(None))
+        across = polylines_across(result, slice(None), level)
+        away = np.setdiff1d(whole.index, across.index)
+        r = whole.r_re[away]
+        assert np.all((np.nanmax(r, axis=1) < level) | (np.nanmin(r, axis=1) > level))
+        for name in ("time_h", "r_re", "mlt_h", "energy_keV", "pitch_deg", "turns"):
+            assert np.array_equal(getattr(across, name), getattr(whole, name)[across.index], equal_nan=True)
+
+
+def test_the_sentences_read_the_tracks_of_r_only_and_few_at_a_time(monkeypatch: pytest.MonkeyPatch) -> None:
+    result = synthetic.drifting(n=60)
+    said = sentences(result)
+    read: list[tuple[str, int]] = []
+    track = result.track
+
+    class Watched(dict[str, np.ndarray]):
+        def rows(self, name: str, index: np.ndarray | slice) -> np.ndarray:
+            read.append((name, track[name][index].shape[0]))
+            return np.asarray(track[name][index])
+
+    monkeypatch.setattr(arrivals_module, "BLOCK_POINTS", 7 * (result.time_h.size + 2))
+    assert sentences(dataclasses.replace(result, track=Watched())) == said
+    assert {name for name, _ in read} == {"r_re"}
+    assert max(rows for _, rows in read) == 7
+    assert sum(rows for _, rows in read) == 60
 
 
 def test_a_particle_too_fast_to_follow_has_no_known_local_time() -> None:

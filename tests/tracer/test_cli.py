@@ -213,8 +213,8 @@ def test_trace_as_json(small: Run) -> None:
 def test_an_infinite_error_is_null_in_json(small: Run, monkeypatch: pytest.MonkeyPatch) -> None:
     real = pipeline.trace
 
-    def once(scenario: Scenario, *_: Any, **__: Any) -> Result:
-        result = real(scenario)
+    def once(scenario: Scenario, out: str, **_: Any) -> Result:
+        result = real(scenario, out, overwrite=True)
         result.attrs["end_error_100_re"] = float("inf")  # as when one ends elsewhere in the finer run
         return result
 
@@ -381,21 +381,26 @@ def test_version(run: Run) -> None:
     assert run("--version") == (0, f"driftrose, version {tracer.__version__}\n", "")
 
 
-def test_ctrl_c(small: Run, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_ctrl_c(small: Run, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     def stop(*_: Any) -> NoReturn:
         raise KeyboardInterrupt
 
     monkeypatch.setattr(pipeline, "run_chunk", stop)
     done = small("trace", "storm.toml")
-    assert done == (3, "", "driftrose: stopped before the end; nothing was kept\n")
-    assert files() == ["storm-kp.csv", "storm.toml"]
+    line = "driftrose: stopped after 0 of 40 particles; the same command with --resume goes on\n"
+    assert done == (3, "", line)
+    assert files() == ["storm-kp.csv", "storm.h5.part", "storm.h5.part.log", "storm.toml"]
+    monkeypatch.undo()
+    monkeypatch.chdir(tmp_path)
+    assert small("trace", "storm.toml", "--resume", "--quiet").status == 0
+    assert files() == ["storm-kp.csv", "storm.h5", "storm.toml"]
 
 
 def test_sigterm_stops_as_ctrl_c_does(small: Run, monkeypatch: pytest.MonkeyPatch) -> None:
     before = signal.getsignal(signal.SIGTERM)
     monkeypatch.setattr(pipeline, "run_pilot", lambda *_: os.kill(os.getpid(), signal.SIGTERM))
     assert small("trace", "storm.toml").status == 3
-    assert files() == ["storm-kp.csv", "storm.toml"]
+    assert files() == ["storm-kp.csv", "storm.h5.part", "storm.toml"]
     assert signal.getsignal(signal.SIGTERM) is before
 
 

@@ -222,6 +222,24 @@ def test_a_touch_within_a_step_is_found_and_a_near_miss_is_none(orbits: Traced, 
     assert met >= 6
 
 
+@pytest.mark.parametrize("depth", [1e-3, 1e-6, 1e-9])
+def test_a_touch_is_found_wherever_in_the_step_it_lies(orbits: Traced, depth: float) -> None:
+    # r = limit + depth - (x - top)^2, written as the interpolant f0 + x (f1 + (1 - x) f2)
+    first_crossing = storm_runs.part(orbits.kernel, "crossing").first_crossing
+    p, limit = (1.0, 0.0, 1.0, 1e-6), 8.0
+    for top in np.linspace(0.0, 1.0, 101)[1:-1]:
+        for which, sign in ((Cause.OUTER, 1.0), (Cause.INNER, -1.0)):
+            start, end = (limit + sign * (depth - (x - top) ** 2) for x in (0.0, 1.0))
+            if sign * (start - limit) >= 0.0:
+                continue
+            F = np.zeros(16)
+            F[:3] = start, end - start, sign
+            x = first_crossing(int(which), F, limit, limit, 1.0, p, orbits.kernel.constants)
+            assert x == pytest.approx(top - np.sqrt(depth), abs=1e-9 + 1e-15 / np.sqrt(depth)), top
+            F[0] -= 2.0 * sign * depth
+            assert first_crossing(int(which), F, limit, limit, 1.0, p, orbits.kernel.constants) > 1.0
+
+
 def limits(side: str, limit: float) -> Domain:
     return Domain(outer_re=limit) if side == "outer" else Domain(outer_re=50.0, inner_re=limit)
 

@@ -67,8 +67,8 @@ def call_inverse_cube_root(x: Any) -> Any:
 
 
 @njit
-def call_square_root(x: Any) -> Any:
-    return arith.square_root(x)
+def call_roots(x: Any) -> Any:
+    return arith.square_root(x), arith.inverse_square_root(x), arith.reciprocal(x)
 
 
 @njit
@@ -115,9 +115,22 @@ def test_inverse_cube_root_over_one_octave_and_the_next() -> None:
 
 @settings(deadline=None)  # the first call compiles
 @given(st.floats(0.5, 20.0), st.floats(-8.0, 8.0))
-def test_power_and_square_root(x: float, exponent: float) -> None:
+def test_power(x: float, exponent: float) -> None:
     assert call_power(x, exponent) == pytest.approx(np.power(x, exponent), rel=bound("power"), abs=0)
-    assert call_square_root(x) == np.sqrt(x)
+
+
+@settings(deadline=None)  # the first call compiles
+@given(st.floats(1e-250, 1e250))
+def test_square_root_and_reciprocals_of_any_magnitude(x: float) -> None:
+    # those of the processor are exact to the last digit
+    assert call_roots(x) == pytest.approx((np.sqrt(x), 1.0 / np.sqrt(x), 1.0 / x), rel=bound("rough root"), abs=0)
+
+
+def test_square_root_and_reciprocals_over_two_octaves() -> None:
+    # the start of the iteration depends on where x stands between two powers of 4
+    x = np.geomspace(1.0, 4.0, 4001)
+    got = np.array([call_roots(v) for v in x])
+    np.testing.assert_allclose(got, np.stack([np.sqrt(x), 1.0 / np.sqrt(x), 1.0 / x], axis=1), rtol=bound("rough root"))
 
 
 @settings(deadline=None)  # the first call compiles

@@ -15,8 +15,8 @@ from scipy.stats import qmc
 from small_runs import number, population, scenario, span
 
 from fields.errors import InputError
-from tracer.population import SOBOL_BITS, random_points, sobol_points, spaced
 from tracer.population import initial_state as state
+from tracer.population import initial_state_at, random_points, sobol_points, spaced
 from tracer.scenario import Quantity
 
 # A correct draw fails a test at this level once in a thousand; the seeds are fixed, so a pass stays a pass.
@@ -74,19 +74,19 @@ def test_sobol_fills_more_evenly_than_chance():
 @given(count=st.integers(1, 3000), dimensions=st.integers(1, 5), seed=st.integers(0, 2**63 - 1))
 def test_sobol_is_scipys_sequence_cut_from_the_next_power_of_two(count, dimensions, seed):
     whole = qmc.Sobol(dimensions, scramble=True, rng=seed).random_base2((count - 1).bit_length())  # scipy
-    ours = sobol_points(population(count=count, seed=seed), dimensions, 0, count)
+    ours = sobol_points(population(count=count, seed=seed), dimensions, np.arange(count))
     np.testing.assert_array_equal(ours, whole[:count])
 
 
 def test_sobol_far_out_is_scipys_sequence():
     first, stop = 3_000_001, 3_000_200
     engine = qmc.Sobol(4, scramble=True, rng=5).fast_forward(first)
-    ours = sobol_points(population(count=2**SOBOL_BITS, seed=5), 4, first, stop)
+    ours = sobol_points(population(count=2**30, seed=5), 4, np.arange(first, stop))
     np.testing.assert_array_equal(ours, engine.random(stop - first))
 
 
 def test_sobol_of_more_than_2_to_30_points_is_scipys_wider_sequence():
-    ours = sobol_points(population(count=2**30 + 1, seed=5), 3, 0, 1024)
+    ours = sobol_points(population(count=2**30 + 1, seed=5), 3, np.arange(1024))
     np.testing.assert_array_equal(ours, qmc.Sobol(3, scramble=True, rng=5, bits=52).random_base2(10))
     assert ours.max() < 1.0
 
@@ -96,8 +96,15 @@ def test_sobol_of_more_than_2_to_30_points_is_scipys_wider_sequence():
 )
 def test_random_is_numpys_default_generator(first, size, dimensions, seed):
     whole = np.random.default_rng(seed).random((first + size, dimensions))  # numpy
-    ours = random_points(population(seed=seed), dimensions, first, first + size)
+    ours = random_points(population(seed=seed), dimensions, np.arange(first, first + size))
     np.testing.assert_array_equal(ours, whole[first:])
+
+
+@given(index=st.lists(st.integers(0, 500), max_size=40), dimensions=st.integers(1, 5))
+def test_random_rows_in_any_order_are_numpys(index, dimensions):
+    whole = np.random.default_rng(9).random((501, dimensions))  # numpy
+    ours = random_points(population(seed=9), dimensions, np.array(index, dtype=np.int64))
+    np.testing.assert_array_equal(ours, whole[index])
 
 
 RUN = scenario(
@@ -127,6 +134,21 @@ def test_no_cut_changes_a_bit(cuts):
         joined = np.concatenate([part[name] for part in parts])
         assert joined.dtype == column.dtype
         np.testing.assert_array_equal(joined, column)
+
+
+@given(st.lists(st.integers(0, RUN.count - 1), max_size=30))
+def test_scattered_particles_are_those_of_the_run(index):
+    some = initial_state_at(RUN, np.array(index, dtype=np.int64))
+    assert some.keys() == WHOLE.keys()
+    for name, column in some.items():
+        assert column.dtype == WHOLE[name].dtype
+        np.testing.assert_array_equal(column, WHOLE[name][index])
+
+
+@pytest.mark.parametrize("wrong", [-1, RUN.count])
+def test_a_particle_that_does_not_exist_is_refused(wrong):
+    with pytest.raises(ValueError, match=f"no particle {wrong} of 254"):
+        initial_state_at(RUN, np.array([0, wrong]))
 
 
 def test_columns_name_the_population():

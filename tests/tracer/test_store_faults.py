@@ -85,9 +85,9 @@ def test_read_only_directory(tmp_path, monkeypatch):
 
 def test_two_runs_do_not_write_the_same_file(tmp_path):
     with store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {}) as writer:
-        second = store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {})
-        with pytest.raises(InputError, match="another run is writing it"), second:
-            pytest.fail("it is locked")
+        for given in ({}, {"overwrite": True}, {"resume": True}):
+            with pytest.raises(InputError, match=r"out\.h5: another run is writing it; wait for that run"):
+                store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {}, **given)
         writer.write(chunk(SHORT, 0, 9))
         writer.finish()
     assert store.open(tmp_path / "out.h5").count == 9
@@ -102,17 +102,30 @@ def test_a_leftover_of_a_killed_run_is_replaced(tmp_path):
 # --- whole or not at all ---------------------------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("fault", [RuntimeError, KeyboardInterrupt, OSError])
-def test_an_exception_leaves_nothing(tmp_path, fault):
-    def broken_off():
-        with store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {}) as writer:
-            writer.write(chunk(SHORT, 0, 4))
-            assert [p.name for p in tmp_path.iterdir()] == ["out.h5.part"]
-            raise fault
+def broken_off(path, fault, stop):
+    with store.TrajectoryWriter(path, SHORT, {}) as writer:
+        writer.write(chunk(SHORT, 0, stop))
+        assert sorted(p.name for p in path.parent.iterdir()) == ["out.h5.part", "out.h5.part.log"]
+        raise fault
 
+
+@pytest.mark.parametrize("fault", [RuntimeError, OSError])
+def test_a_fault_before_anything_is_whole_leaves_nothing(tmp_path, fault):
     with pytest.raises(fault):
-        broken_off()
+        broken_off(tmp_path / "out.h5", fault, 4)
     assert not list(tmp_path.iterdir())
+
+
+@pytest.mark.parametrize(("fault", "stop"), [(RuntimeError, 9), (KeyboardInterrupt, 4), (KeyboardInterrupt, 9)])
+def test_what_was_finished_is_kept(tmp_path, fault, stop):
+    with pytest.raises(fault):
+        broken_off(tmp_path / "out.h5", fault, stop)
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["out.h5.part", "out.h5.part.log"]
+    line = r"out\.h5\.part: an interrupted run has left what it finished; --resume to go on with it, or --overwrite"
+    with pytest.raises(InputError, match=line):
+        store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {})
+    write(tmp_path / "out.h5", overwrite=True)
+    assert [p.name for p in tmp_path.iterdir()] == ["out.h5"]
 
 
 def test_it_appears_at_the_last_step_only(tmp_path):
@@ -125,12 +138,15 @@ def test_it_appears_at_the_last_step_only(tmp_path):
 
 @pytest.mark.parametrize("pieces", [[(0, 4)], [(0, 4), (5, 9)], [(4, 9)], [(0, 9), (3, 4)], []])
 def test_particles_left_out_or_written_twice_are_noticed(tmp_path, pieces):
-    with store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {}) as writer:
-        for first, stop in pieces:
-            writer.write(chunk(SHORT, first, stop))
-        with pytest.raises(ValueError, match="written"):
+    def written():
+        with store.TrajectoryWriter(tmp_path / "out.h5", SHORT, {}) as writer:
+            for first, stop in pieces:
+                writer.write(chunk(SHORT, first, stop))
             writer.finish()
-    assert not list(tmp_path.iterdir())
+
+    with pytest.raises(ValueError, match="written"):
+        written()
+    assert not (tmp_path / "out.h5").exists()
 
 
 def test_wrong_shape_is_refused(tmp_path):

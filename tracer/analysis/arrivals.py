@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Literal
 
@@ -10,7 +11,7 @@ from numpy.typing import NDArray
 
 from fields.errors import InputError, nearest
 from fields.units import Floats
-from tracer.analysis.polylines import Polylines, polylines, shorter_way
+from tracer.analysis.polylines import Polylines, RadialPaths, polylines_across, radial_paths_across, shorter_way
 from tracer.records import Result
 
 Direction = Literal["inward", "outward", "any"]
@@ -95,26 +96,52 @@ def crossings(result: Result, r_re: float, direction: Direction = "any") -> Cros
     InputError
         When `r_re` or `direction` makes no sense.
     """
-    if not (np.isfinite(r_re) and r_re > 0):
-        raise InputError("not a distance", "a number above 0 R_E", key="r_re", value=r_re)
-    if direction not in DIRECTIONS:
-        raise InputError("unknown direction", nearest(direction, DIRECTIONS), key="direction", value=direction)
-    block = max(1, BLOCK_POINTS // (result.time_h.size + 2))
+    _refuse_nonsense(r_re, direction)
     parts = [
-        _crossings_of(polylines(result, slice(begin, begin + block)), float(r_re), direction)
-        for begin in range(0, max(result.count, 1), block)
+        _crossings_of(polylines_across(result, rows, float(r_re)), float(r_re), direction) for rows in _blocks(result)
     ]
     names = ("particle", "time_h", "mlt_h", "energy_keV", "pitch_deg", "inward", "mlt_known")
     return Crossings(float(r_re), *(np.concatenate([getattr(part, name) for part in parts]) for name in names))
 
 
+def first_times(result: Result, r_re: float, direction: Direction = "any") -> tuple[NDArray[np.int64], Floats]:
+    """Who crosses the circle r = `r_re`, and when first: those of ``crossings(...).first()``, without their state.
+
+    Reads the tracks of r only. Arguments as of `crossings`.
+
+    Returns
+    -------
+    particle : ndarray of int, shape (n,)
+        Rising particle numbers.
+    time_h : ndarray, shape (n,)
+    """
+    _refuse_nonsense(r_re, direction)
+    parts = []
+    for rows in _blocks(result):
+        paths = radial_paths_across(result, rows, float(r_re))
+        row, column, _ = _hits(paths, float(r_re), direction)
+        first = np.unique(row, return_index=True)[1]
+        parts.append((paths.index[row[first]], _passage(paths, row[first], column[first], float(r_re))[0]))
+    return np.concatenate([particle for particle, _ in parts]), np.concatenate([time for _, time in parts])
+
+
+def _refuse_nonsense(r_re: float, direction: str) -> None:
+    if not (np.isfinite(r_re) and r_re > 0):
+        raise InputError("not a distance", "a number above 0 R_E", key="r_re", value=r_re)
+    if direction not in DIRECTIONS:
+        raise InputError("unknown direction", nearest(direction, DIRECTIONS), key="direction", value=direction)
+
+
+def _blocks(result: Result) -> Iterator[slice]:
+    """All particles, by as many as may be held at a time."""
+    block = max(1, BLOCK_POINTS // (result.time_h.size + 2))
+    for begin in range(0, max(result.count, 1), block):
+        yield slice(begin, begin + block)
+
+
 def _crossings_of(paths: Polylines, r_re: float, direction: Direction) -> Crossings:
-    here, after = paths.r_re[:, :-1], paths.r_re[:, 1:]
-    inward, outward = (here > r_re) & (after <= r_re), (here < r_re) & (after >= r_re)
-    hit = {"inward": inward, "outward": outward, "any": inward | outward}[direction]
-    row, column = np.nonzero(hit)
-    time = _four(paths.time_h, row, column)
-    part = _part_at(_hermite(time, _four(paths.r_re, row, column)), r_re)
+    row, column, inward = _hits(paths, r_re, direction)
+    time_h, time, part = _passage(paths, row, column, r_re)
     mlt = _unwound(_four(paths.mlt_h, row, column))
     values = [
         _value(_hermite(time, points), part)
@@ -123,19 +150,39 @@ def _crossings_of(paths: Polylines, r_re: float, direction: Direction) -> Crossi
     return Crossings(
         r_re,
         paths.index[row],
-        time[:, 1] + part * (time[:, 2] - time[:, 1]),
+        time_h,
         values[0] % 24.0,
         values[1],
         np.minimum(values[2], 90.0),
-        inward[row, column],
+        inward,
         paths.followed()[row],
     )
 
 
+def _hits(
+    paths: RadialPaths, r_re: float, direction: Direction
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.bool_]]:
+    """Path and first point of each interval that holds a crossing, and whether that is inward."""
+    here, after = paths.r_re[:, :-1], paths.r_re[:, 1:]
+    inward, outward = (here > r_re) & (after <= r_re), (here < r_re) & (after >= r_re)
+    row, column = np.nonzero({"inward": inward, "outward": outward, "any": inward | outward}[direction])
+    return row, column, inward[row, column]
+
+
+def _passage(
+    paths: RadialPaths, row: NDArray[np.int64], column: NDArray[np.int64], r_re: float
+) -> tuple[Floats, Floats, Floats]:
+    """Time of each crossing, the times of the four points around it, and where in the middle interval it lies."""
+    time = _four(paths.time_h, row, column)
+    part = _part_at(_hermite(time, _four(paths.r_re, row, column)), r_re)
+    return time[:, 1] + part * (time[:, 2] - time[:, 1]), time, part
+
+
 def _four(table: Floats, row: NDArray[np.int64], column: NDArray[np.int64]) -> Floats:
     """The points at column - 1 to column + 2, NaN off the table; shape (n, 4)."""
-    padded = np.pad(table, ((0, 0), (1, 1)), constant_values=np.nan)
-    return np.asarray(padded[row[:, None], column[:, None] + np.arange(4)])
+    wanted = column[:, None] + np.arange(-1, 3)
+    inside = (wanted >= 0) & (wanted < table.shape[1])
+    return np.where(inside, table[row[:, None], np.clip(wanted, 0, table.shape[1] - 1)], np.nan)
 
 
 def _unwound(mlt: Floats) -> Floats:

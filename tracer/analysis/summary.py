@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from tracer.analysis.arrivals import crossings
+from tracer.analysis.arrivals import first_times
 from tracer.analysis.endings import counts_by_cause
 from tracer.analysis.facts import Facts, facts
 from tracer.records import Result
@@ -35,13 +35,13 @@ def sentences(result: Result, r_re: float = 4.0) -> list[str]:
 
 def _reaching(result: Result, run: Facts, r_re: float) -> list[str]:
     """One sentence for each population on who came to r = `r_re`."""
-    found = crossings(result, r_re, "inward").first()
+    particle, time_h = first_times(result, r_re, "inward")
     members = np.asarray(result.particle["population"])
     cause = np.asarray(result.end["cause"])
     lines = []
     for code, name in enumerate(result.population_names):
         released = int(np.count_nonzero((members == code) & (cause != Cause.NEVER_RELEASED)))
-        times = found.time_h[members[found.particle] == code] * run.direction
+        times = time_h[members[particle] == code] * run.direction
         if released == 0:
             continue
         if times.size == 0:

@@ -127,6 +127,11 @@ def field_source(field: Field) -> tuple[str, tuple[float, ...]]:
     return "\n".join(body), tuple(constants)
 
 
+def program_of(field: Field) -> str:
+    """Name of the kernel of `field`, which stands for all that its machine code depends on."""
+    return kernel_name(field_source(field)[0], tuple(function_files(field)))
+
+
 def driver_table(drivers: tuple[Driver, ...]) -> tuple[Floats, Floats]:
     """Corners of all drivers together, and their values and slopes in each segment between them."""
     if not drivers:
