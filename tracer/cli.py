@@ -68,7 +68,7 @@ def check(run: str, as_json: bool) -> None:
 @click.option("-o", "--output", type=click.Path(), help="Trajectory file to write.  [default: RUN's stem.h5, here]")
 @click.option("--overwrite", is_flag=True, help="Replace an existing file, once the new one is whole.")
 @click.option("--resume", is_flag=True, help="Go on with a run that was interrupted, to the same bits.")
-@click.option("--threads", type=click.IntRange(1, 1024), help="Threads to use.  [default: all processors]")
+@click.option("--threads", type=click.IntRange(1, 1024), help="Threads to use.  [default: all; of a worker, 1]")
 @click.option("--workers", type=click.IntRange(1, 1024), metavar="N", help="Worker processes to use on this machine.")
 @click.option("--scheduler", metavar="ADDRESS", help="A dask.distributed cluster to use: address or scheduler file.")
 @click.option("--quiet", is_flag=True, help="No progress, no closing table.")

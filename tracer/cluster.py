@@ -159,6 +159,7 @@ class Cluster:
             with suppress(OSError, CancelledError):  # else the worker that kept it is slow, or gone
                 chunk: Chunk = future.result(timeout=patience)
                 return chunk
+            time.sleep(TICK_S)  # for the loss of the scheduler to show
             self._survey()
             if not task.workers & self._threads.keys():
                 return None

@@ -15,7 +15,6 @@ from tracer.scenario import Scenario
 from tracer.status import Cause
 from tracer.store_attrs import DIGEST, digest, iso_utc
 from tracer.store_checksum import fletcher32
-from tracer.store_labels import LABELS, labels_digest
 from tracer.store_overlay import Overlay
 
 ROWS = 4096  # particles in a chunk of a column, at most
@@ -92,7 +91,7 @@ def build_skeleton(file: h5py.File, scenario: Scenario, attrs: Mapping[str, Any]
     _label_codes(file, scenario)
     for number, (driver, unit, use) in enumerate(drivers_of(scenario.field)):
         _create_driver(file.create_group(f"driver/{number}"), driver, unit, use, allocate)
-    write_attrs(file, {**attrs, "complete": False, LABELS: labels_digest(file)})
+    write_attrs(file, {**attrs, "complete": False})
 
 
 def skeleton(scenario: Scenario, attrs: Mapping[str, Any]) -> Overlay:

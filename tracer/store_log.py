@@ -14,7 +14,7 @@ from pathlib import Path
 from typing import Any, Self
 
 LINE_BYTES = 80  # of a row record, at most
-CLOSING_BYTES = 2**17
+CLOSING_BYTES = 2**17  # the last change to the file, as it stands in the log; more than the file grows by then
 
 
 class Log:

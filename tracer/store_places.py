@@ -6,6 +6,7 @@ import hashlib
 import itertools
 import os
 from collections.abc import Iterator, Mapping
+from concurrent.futures import ThreadPoolExecutor, wait
 from dataclasses import dataclass
 
 import h5py
@@ -17,6 +18,7 @@ from tracer.store_checksum import CHECKSUM_BYTES, fletcher32
 from tracer.store_log import write_at
 
 DIGEST_LETTERS = 32
+THREADS = 4
 
 
 @dataclass(frozen=True, eq=False)
@@ -74,6 +76,7 @@ class Stripes:
     def __init__(self, handle: int, places: Mapping[str, Place], rows: int) -> None:
         self._handle = handle
         self._rows = rows
+        self._pool = ThreadPoolExecutor(THREADS, "driftrose-writer")
         self.places = places
         self.count = next(iter(places.values())).shape[0]
 
@@ -85,20 +88,38 @@ class Stripes:
         """The stripes that hold particles `first` to `stop` - 1."""
         return range(first // self._rows, -(-stop // self._rows))
 
+    def close(self) -> None:
+        """Wait until nothing writes any more."""
+        self._pool.shutdown(cancel_futures=True)
+
     def write(self, stripe: int, columns: Mapping[str, np.ndarray]) -> str:
-        """Put the rows of a stripe at their places; returns a digest of what stands there."""
+        """Put the rows of a stripe at their places; returns a digest of what stands there.
+
+        Columns with a second axis, by far the largest, are written at the same time.
+        """
         digest = hashlib.sha256()
-        for name, place in self.places.items():
-            for offset, rows, across in self._chunks(stripe, place):
-                data = np.ascontiguousarray(columns[name][(rows, across)[: len(place.chunk)]])
-                if data.shape != place.chunk:
-                    whole = place.empty.copy()
-                    whole[tuple(slice(size) for size in data.shape)] = data
-                    data = whole
-                checksum = fletcher32(data)
-                write_at(self._handle, [data, checksum], offset)
-                digest.update(checksum)
+        wide = [name for name, place in self.places.items() if len(place.chunk) > 1]
+        started = {name: self._pool.submit(self._write, stripe, self.places[name], columns[name]) for name in wide}
+        try:
+            for name, place in self.places.items():
+                future = started.get(name)
+                digest.update(future.result() if future else self._write(stripe, place, columns[name]))
+        finally:
+            wait(started.values())  # nothing may write on when the file is let go
         return digest.hexdigest()[:DIGEST_LETTERS]
+
+    def _write(self, stripe: int, place: Place, column: np.ndarray) -> bytes:
+        """Put the rows of one column at their places; returns their checksums."""
+        checksums = []
+        for offset, rows, across in self._chunks(stripe, place):
+            data = np.ascontiguousarray(column[(rows, across)[: len(place.chunk)]])
+            if data.shape != place.chunk:
+                whole = place.empty.copy()
+                whole[tuple(slice(size) for size in data.shape)] = data
+                data = whole
+            checksums.append(fletcher32(data))
+            write_at(self._handle, [data, checksums[-1]], offset)
+        return b"".join(checksums)
 
     def stands(self, stripe: int, digest: str) -> bool:
         """Whether what `write` put there is what is there."""

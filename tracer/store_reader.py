@@ -18,7 +18,7 @@ from fields.drivers import Driver
 from fields.errors import InputError
 from tracer.records import GROUPS, Column, Result
 from tracer.store_attrs import DIGEST, FORMAT, FORMAT_VERSION, digest, plain_value
-from tracer.store_labels import LABELS, labels_digest
+from tracer.store_seal import fault
 
 SIGNATURE = b"\x89HDF\r\n\x1a\n"
 TABLE_HEADER = re.compile(r"^\s*\[{1,2}\s*[A-Za-z_\"'][^\[\]]*\]{1,2}\s*(#.*)?$", re.MULTILINE)
@@ -38,6 +38,8 @@ def kind(path: str | os.PathLike[str]) -> Literal["run file", "trajectories", "o
     head = _head(path)
     if head.startswith(SIGNATURE):
         try:
+            if fault(path):
+                return "other"
             with h5py.File(path, "r", locking=False) as file:
                 return "trajectories" if plain_value(file.attrs.get("format")) == FORMAT else "other"
         except (OSError, RuntimeError, KeyError, ValueError, TypeError):
@@ -58,8 +60,6 @@ def open(path: str | os.PathLike[str]) -> Result:
     with _readable(path, "") as file:
         attrs = _checked_attrs(file, str(path))
         count = _checked_shapes(file, str(path))
-        if attrs.get(LABELS) != labels_digest(file):
-            raise InputError("its labels were changed after it was made", AGAIN, key=LABELS, file=str(path))
         time = np.asarray(_read(path, file, "time")) if "time" in file else np.empty(0)
         drivers = tuple(_driver(path, file, n, **texts) for n, texts in enumerate(json.loads(attrs["drivers"])))
     kept = {name: columns if time.size or name != "track" else () for name, columns in GROUPS.items()}
@@ -152,6 +152,8 @@ def _looks_like_toml(head: bytes) -> bool:
 def _refuse_other(path: str | os.PathLike[str]) -> None:
     head = _head(path)
     if head.startswith(SIGNATURE):
+        if problem := fault(path):
+            raise InputError(problem, AGAIN, file=str(path))
         return
     if _looks_like_toml(head):
         problem = "a run file where a trajectory file belongs"

@@ -26,14 +26,14 @@ from tracer.stopping import Stopped
 from tracer.store_attrs import provenance
 from tracer.store_identity import identity, refuse_other
 from tracer.store_layout import amend, groups_of, skeleton, stripe_rows
-from tracer.store_log import Log, reserve, write_at
+from tracer.store_log import CLOSING_BYTES, Log, reserve, write_at
 from tracer.store_output import LOG, PART, check_output, check_replaced, locked, publish, room_for, sync_directory
 from tracer.store_overlay import Overlay
 from tracer.store_places import Stripes, places_of
 from tracer.store_reader import open as read
+from tracer.store_seal import seal
 
 LOG_FORMAT = "driftrose log 1"
-SYNC_BYTES = 2**26
 Span = tuple[int, int]
 
 
@@ -95,7 +95,6 @@ class TrajectoryWriter:
         self._stripes: Stripes | None = None
         self._done: dict[int, str] = {}
         self._partly: dict[int, Gathered] = {}
-        self._unsynced = 0
         self._finished = False
 
     def __enter__(self) -> Self:
@@ -130,7 +129,7 @@ class TrajectoryWriter:
         stripes = -(-count // stripe_rows(count, self._scenario.save_times_h.size))
         with self._room():
             try:
-                reserve(self._file, made.size)
+                reserve(self._file, made.size + CLOSING_BYTES)
                 for offset, data in made.changes():
                     write_at(self._file, [data], offset)
                 os.fsync(self._file)
@@ -204,13 +203,11 @@ class TrajectoryWriter:
             if not isinstance(log.records[-1], dict) or "close" not in log.records[-1]:
                 changed = Overlay(self._file)
                 amend(changed, {**(extra_attrs or {}), "complete": True})
-                changes = [[offset, base64.b85encode(data).decode()] for offset, data in changed.changes()]
+                end = (changed.size, seal(changed, self._begun_stripes().places))
+                changes = [[offset, base64.b85encode(data).decode()] for offset, data in (*changed.changes(), end)]
                 log.append({"close": changes, "size": changed.size})
                 log.sync()
-            closing = log.records[-1]
-            os.ftruncate(self._file, closing["size"])
-            for offset, text in closing["close"]:
-                write_at(self._file, [base64.b85decode(text)], offset)
+            self._close(log.records[-1])
             os.fsync(self._file)
         publish(self.part, self.path, self._overwrite or bool(log.records[0]["overwrite"]))
         self._finished = True
@@ -232,6 +229,8 @@ class TrajectoryWriter:
         if os.fstat(self._file).st_size < self._needed:
             raise self._damaged()
         try:
+            if isinstance(log.records[-1], dict) and "close" in log.records[-1]:
+                self._close(log.records[-1])
             self._opened(header["attrs"])
         except (OSError, RuntimeError, KeyError, ValueError) as error:
             raise self._damaged() from error
@@ -239,6 +238,12 @@ class TrajectoryWriter:
         for record in log.records[1:]:
             if isinstance(record, list) and stripes.stands(*record):
                 self._done[record[0]] = record[1]
+
+    def _close(self, closing: Mapping[str, Any]) -> None:
+        """Make the last change to the skeleton, once more if need be."""
+        os.ftruncate(self._file, closing["size"])
+        for offset, text in closing["close"]:
+            write_at(self._file, [base64.b85decode(text)], offset)
 
     def _damaged(self) -> InputError:
         return InputError("damaged, cannot be resumed", "--overwrite to start again", file=str(self.part))
@@ -285,6 +290,8 @@ class TrajectoryWriter:
 
     def _leave(self, error: BaseException | None) -> None:
         """Let go of the files; remove them unless there is something to resume, or the process was told to stop."""
+        if self._stripes is not None:
+            self._stripes.close()
         if self._log is not None:
             self._log.close()
         told = isinstance(error, Stopped) or not (error is None or isinstance(error, Exception))

@@ -103,3 +103,21 @@ def test_hamlin_approximation_of_t() -> None:
     pitch = np.linspace(3.0, 90.0, 180)
     t = LINES.bounce_path(cot2_of_pitch(pitch), R, PHI) / (4.0 * R)
     np.testing.assert_allclose(1.30 - 0.56 * np.sin(np.radians(pitch)), t, rtol=bound("fast approximation T"))
+
+
+def test_each_line_keeps_its_bits_in_any_company() -> None:
+    """So that a run gives the same bits however it is cut."""
+    pitch = np.concatenate([np.geomspace(0.05, 5.0, 40), np.linspace(5.0, 90.0, 40)])
+    cot2 = cot2_of_pitch(np.random.default_rng(4).permutation(pitch))
+    together = LINES.second_invariant(cot2, R, PHI), LINES.bounce_path(cot2, R, PHI)
+    for size in (1, 7):
+        parts = [cot2[first : first + size] for first in range(0, cot2.size, size)]
+        for whole, function in zip(together, (LINES.second_invariant, LINES.bounce_path)):
+            assert np.array_equal(np.concatenate([function(part, R, PHI) for part in parts]), whole)
+
+
+@pytest.mark.parametrize("pitch_deg", [0.05, 0.3, 0.99, 1.9, 2.1])
+def test_near_the_field_lines_direction_as_many_nodes_as_it_takes(pitch_deg: float) -> None:
+    cot2 = float(cot2_of_pitch(pitch_deg))
+    t, y, _ = t_and_y(cot2)  # mpmath
+    assert ours(cot2) == pytest.approx((t, y), rel=bound("bounce integral"), abs=0)

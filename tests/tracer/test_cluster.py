@@ -184,7 +184,7 @@ def test_a_lost_scheduler_leaves_a_run_to_resume(site: Site, tmp_path: Path, mon
     with pytest.raises(tracer.Stopped) as caught:
         tracer.trace(RUN, tmp_path / "out.h5", scheduler=site.address, watcher=watch)
     assert str(caught.value).startswith(f"the scheduler at {site.address} was lost; stopped after ")
-    assert time.monotonic() - watch.began < 10.0
+    assert time.monotonic() - watch.began < 15.0
     assert not (tmp_path / "out.h5").exists()
     tracer.trace(RUN, tmp_path / "out.h5", resume=True)
     assert datasets(tmp_path / "out.h5") == datasets(tmp_path / "whole.h5")

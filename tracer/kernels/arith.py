@@ -84,7 +84,7 @@ COS = (-1 / 2, 1 / 24, -1 / 720, 1 / 40320, -1 / 3628800, 1 / 479001600, -1 / 87
 
 @inlined
 def sincos(x: Any) -> Any:
-    """sin and cos, absolute error below 1e-15 for a few turns: Taylor polynomials of a quarter of the angle."""
+    """sin and cos, absolute error below 2e-15 for a few turns: Taylor polynomials of a quarter of the angle."""
     u = 0.25 * (x - TWO_PI * np.rint(x * INVERSE_TWO_PI))
     z = u * u
     s, c = SIN[7], COS[7]

@@ -32,6 +32,7 @@ from fields.drivers import Driver
 from fields.field import Field
 from fields.units import Floats
 from tracer.kernels import arith
+from tracer.kernels.loading import load_library
 from tracer.status import Cause
 
 PARENT = "driftrose_kernels"
@@ -67,6 +68,7 @@ class Kernel:
 
 def kernel_for(field: Field) -> Kernel:
     """Build or load the kernel of `field`."""
+    load_library()
     text, constants = field_source(field)
     arith.register_pointwise()
     module, fresh = load_module(text, tuple(function_files(field)))

@@ -85,8 +85,8 @@ def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: 
         if ga < 0.0 <= gb:
             return root(which, F, b - width, b, outer, inner, foot_re, p, C)
         top, lowest = max(before, ga, gb), min(before, ga, gb)
-        summit = ga >= before or i == SAMPLES
-        if before < 0.0 and top < 0.0 and summit and top + (top - lowest) >= 0.0:
+        summit = ga >= before or i == 2 or i == SAMPLES
+        if i > 1 and before < 0.0 and top < 0.0 and summit and top + (top - lowest) >= 0.0:
             start = max(b - 2.0 * width, 0.0)
             x = highest(which, F, start, b, outer, inner, foot_re, p, C)
             if excess_along(which, F, x, outer, inner, foot_re, p, C) >= 0.0:

@@ -18,7 +18,7 @@ TINY = 1e-300  # keeps 0/0 away where the field is uniform along the step
 
 @inlined
 def solution(r: Any, phi: Any, h: Any, k1: Any, l1: Any, stages: Any) -> Any:
-    """The new point, and the estimate of the local error in R_E as DOP853 forms it."""
+    """The new point, and DOP853's estimate of the local error, as a distance in R_E."""
     k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
     rn = (
         r + h * (tb.B1 * k1 + tb.B6 * k6 + tb.B7 * k7 + tb.B8 * k8 + tb.B9 * k9 + tb.B10 * k10 + tb.B11 * k11 + tb.B12
@@ -47,7 +47,7 @@ def solution(r: Any, phi: Any, h: Any, k1: Any, l1: Any, stages: Any) -> Any:
     # distances in R_E: r itself, and r times the angle
     five = e5r * e5r + r * r * e5p * e5p
     three = e3r * e3r + r * r * e3p * e3p
-    error = abs(h) * five / np.sqrt(0.5 * (five + 0.01 * three) + TINY)
+    error = abs(h) * five / np.sqrt(five + 0.01 * three + TINY)
     return rn, pn, error
 
 
@@ -61,7 +61,7 @@ def trial(t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any, p: Any, C: Any, D:
     Returns
     -------
     rn, pn : the new point
-    error : estimate of the local error in R_E, as DOP853 forms it
+    error : estimate of the local error, R_E
     stages : the slopes that the interpolant needs
     """
     k2, l2 = slope(t + tb.C2 * h, r + h * (tb.A2_1 * k1), phi + h * (tb.A2_1 * l1), p, C, D)
