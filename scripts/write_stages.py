@@ -11,7 +11,8 @@ import textwrap
 from pathlib import Path
 
 SOURCE = Path(__file__).resolve().parent.parent / "tracer" / "kernels" / "source"
-HEAD = '''"""The stages of one step, each for all lanes before the next: written by ``scripts/write_stages.py`` from tableau.py.
+HEAD = '''\
+"""The stages of one step, each for all lanes before the next: written by ``scripts/write_stages.py`` from tableau.py.
 
 Within a stage the lanes are independent, so that the processor works on several registers full of them at once; a step
 that went through all stages of one register before the next would wait for itself.
@@ -30,8 +31,6 @@ from .layout import (
     D0, K, {names}
     LANES, M, MU, PHI, Q, R, STEP, T,
 )  # fmt: skip
-
-# fmt: off
 '''
 STAGE = '''
 
@@ -59,16 +58,17 @@ def sum_of(target: str, base: str, letter: str, stage: int, known: set[str]) -> 
     return "\n".join(textwrap.wrap(line, 116, initial_indent=" " * 8, subsequent_indent=" " * 12))
 
 
-def main() -> None:
+def text() -> str:
+    """The module, whole."""
     known = constants()
     stages = [*range(2, 13), 14, 15, 16]
     rows = [f"{letter}{i}" for letter in "KL" for i in range(1, 17)]
     names = "\n    ".join(textwrap.wrap(", ".join(rows) + ",", 110))
-    text = HEAD.replace("{names}", names)
+    module = HEAD.replace("{names}", names)
     for i in stages:
-        text += STAGE.format(i=i, r=sum_of("r", "R", "K", i, known), p=sum_of("phi", "PHI", "L", i, known))
-    (SOURCE / "stages.py").write_text(text, encoding="utf-8")
+        module += STAGE.format(i=i, r=sum_of("r", "R", "K", i, known), p=sum_of("phi", "PHI", "L", i, known))
+    return module
 
 
 if __name__ == "__main__":
-    main()
+    (SOURCE / "stages.py").write_text(text(), encoding="utf-8")

@@ -6,9 +6,9 @@ from datetime import UTC, datetime
 
 import numpy as np
 import pytest
+from published_data import cssi_file
 
 import tracer
-from published_data import cssi_file
 from tracer.records import Result
 from tracer.status import Cause
 
@@ -65,8 +65,8 @@ def test_every_particle_is_accounted_for(result: Result) -> None:
 
 
 def test_strong_convection_empties_the_slow_and_keeps_the_fast(result: Result) -> None:
-    # Maynard & Chen (1975): at Kp 9 the convection amplitude is about ten times that of Kp 2, so that particles slow enough to follow it leave
-    # through the dayside, while those that circle in less than an hour hardly notice.
+    # Maynard & Chen (1975): at Kp 9 the convection amplitude is about ten times that of Kp 2, so that particles slow
+    # enough to follow it leave through the dayside, while those that circle in less than an hour hardly notice.
     energy, lost = result.particle["energy_keV"], result.end["cause"] == Cause.OUTER
     slow, fast = energy < 20.0, energy > 150.0
     assert np.mean(lost[slow]) > 0.8

@@ -17,12 +17,16 @@ from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, p
 from .drift import depth_in_cone, motion_at, observed
 from .field import drivers
 from .lanes import (
-    CROSSING, ENTERING, MOST_STEPS, SHORTEST, accept_all, interpolate_all, interpolate_one, observe_row, particle,
-    point_all, step_all,
+    CROSSING, ENTERING, MOST_STEPS, SHORTEST, accept_all, begin_all, interpolate_all, interpolate_one, judge_all,
+    observe_row, particle, point_all,
 )  # fmt: skip
 from .layout import (
     R, PHI, T, H, TURNS, MU, K, Q, M, BM, BT, LIVE, ACCEPTED, REJECTED, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, FLAG,
     K1, L1, F0, F15, STOP, SR, SP, D0, SIZE, LANES,
+)  # fmt: skip
+from .stages import (
+    stage_2, stage_3, stage_4, stage_5, stage_6, stage_7, stage_8, stage_9, stage_10, stage_11, stage_12, stage_14,
+    stage_15, stage_16,
 )  # fmt: skip
 
 DRIFTING, FAILED = int(Cause.DRIFTING), int(Cause.FAILED)
@@ -163,28 +167,35 @@ def refill(
 
 
 @compiled
-def look_all(W: Any, S: Any, C: Any, rules: Any, times: Any, end: Any, track: Any) -> None:
-    """Before the step is taken: what did each lane meet within it, and which times did it pass?"""
-    sign, saving = rules[1], False
-    for lane in range(LANES):
-        saving = saving or (S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0)
-    if saving:
-        interpolate_all(W, C)
+def due(W: Any, S: Any, sign: Any) -> Any:
+    """Whether any lane's step passes a time to save."""
+    for lane in range(LANES):  # noqa: SIM110 - numba has no any()
+        if S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
+            return True
+    return False
+
+
+@compiled
+def meet_all(W: Any, S: Any, C: Any, rules: Any, interpolated: Any, end: Any) -> None:
+    """Before the step is taken: what did each lane that may have met something meet within it?"""
     for lane in range(LANES):
         if S[OWNER, lane] >= 0 and W[FLAG + lane] > 0.0:
-            if not saving:
+            if not interpolated:
                 interpolate_one(W, lane, C)
             S[FATE, lane] = meet(W, lane, C, rules, end, S[OWNER, lane])
-    while saving:
+
+
+@compiled
+def save_all(W: Any, S: Any, sign: Any, times: Any, track: Any) -> None:
+    """Save every time that the lanes' steps passed."""
+    while due(W, S, sign):
         point_all(W)
-        saving = False
         for lane in range(LANES):
             if S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
                 i, j = S[OWNER, lane], S[FOLLOWING, lane]
                 track[i, 0, j], track[i, 1, j] = W[SR + lane], W[SP + lane]
                 S[FOLLOWING, lane] = j + 1
                 W[NEXT + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
-                saving = True
 
 
 @compiled
@@ -239,9 +250,30 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
     taken = refill(W, S, 0, P, C, edges, segments, rules, times, end, track)
     busy = np.max(S[OWNER]) >= 0
     while busy:
-        calls = step_all(W, C, sign, 1.0 / tolerance, outer, inner, foot_re)
+        # called one by one: numba optimises whatever is nested anew at every level
+        begin_all(W, sign)
+        stage_2(W, C)
+        stage_3(W, C)
+        stage_4(W, C)
+        stage_5(W, C)
+        stage_6(W, C)
+        stage_7(W, C)
+        stage_8(W, C)
+        stage_9(W, C)
+        stage_10(W, C)
+        stage_11(W, C)
+        stage_12(W, C)
+        calls = judge_all(W, C, sign, 1.0 / tolerance, outer, inner, foot_re)
         if calls > 0:
-            look_all(W, S, C, rules, times, end, track)
+            saving = due(W, S, sign)
+            if saving:
+                stage_14(W, C)
+                stage_15(W, C)
+                stage_16(W, C)
+                interpolate_all(W, C)
+            meet_all(W, S, C, rules, saving, end)
+            if saving:
+                save_all(W, S, sign, times, track)
         accept_all(W)
         if calls > 0 and settle_all(W, S, P, C, edges, segments, rules, end):
             taken = refill(W, S, taken, P, C, edges, segments, rules, times, end, track)

@@ -19,10 +19,6 @@ from .layout import (
     L13, L14, L15, L16, F0, F1, F2, F3, F4, F5, F6, F7, F8, F9, F10, F11, F12, F13, F14, F15, STOP, SR, SP, D0,
     LANES,
 )  # fmt: skip
-from .stages import (
-    stage_2, stage_3, stage_4, stage_5, stage_6, stage_7, stage_8, stage_9, stage_10, stage_11, stage_12, stage_14,
-    stage_15, stage_16,
-)  # fmt: skip
 from .step import along, coefficients, interpolant, solution
 
 # So small a safety factor rejects few steps; measured, it costs a quarter less than 0.9 at equal error.
@@ -43,7 +39,7 @@ def particle(W: Any, lane: Any) -> Any:
 
 @inlined
 def stages_of(W: Any, lane: Any) -> Any:
-    """The stages that `step_all` kept."""
+    """The stages that the interpolant needs."""
     return (
         W[K6 + lane], W[K7 + lane], W[K8 + lane], W[K9 + lane],
         W[K10 + lane], W[K11 + lane], W[K12 + lane],
@@ -56,24 +52,6 @@ def stages_of(W: Any, lane: Any) -> Any:
 def late_stages_of(W: Any, lane: Any) -> Any:
     """Stages 14 to 16 of `lane`."""
     return W[K14 + lane], W[K15 + lane], W[K16 + lane], W[L14 + lane], W[L15 + lane], W[L16 + lane]
-
-
-@inlined
-def step_all(W: Any, C: Any, sign: Any, inverse_tolerance: Any, outer: Any, inner: Any, foot_re: Any) -> Any:
-    """Try a step in every lane; returns how many call for scalar code."""
-    begin_all(W, sign)
-    stage_2(W, C)
-    stage_3(W, C)
-    stage_4(W, C)
-    stage_5(W, C)
-    stage_6(W, C)
-    stage_7(W, C)
-    stage_8(W, C)
-    stage_9(W, C)
-    stage_10(W, C)
-    stage_11(W, C)
-    stage_12(W, C)
-    return judge_all(W, C, sign, inverse_tolerance, outer, inner, foot_re)
 
 
 @inlined
@@ -147,10 +125,7 @@ def interpolate_one(W: Any, lane: Any, C: Any) -> None:
 
 @inlined
 def interpolate_all(W: Any, C: Any) -> None:
-    """The interpolant of every lane's step."""
-    stage_14(W, C)
-    stage_15(W, C)
-    stage_16(W, C)
+    """The interpolant of every lane's step, once stages 14 to 16 are there."""
     prefer_widest_vectors()
     for lane in range(LANES):
         f = coefficients(

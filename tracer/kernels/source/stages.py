@@ -1,7 +1,7 @@
 """The stages of one step, each for all lanes before the next: written by ``scripts/write_stages.py`` from tableau.py.
 
-Within a stage the lanes are independent, so that the processor works on several registers full of them at once; a
-step that went through all stages of one register before the next would wait for itself.
+Within a stage the lanes are independent, so that the processor works on several registers full of them at once; a step
+that went through all stages of one register before the next would wait for itself.
 """
 
 from __future__ import annotations
@@ -18,8 +18,6 @@ from .layout import (
     L10, L11, L12, L13, L14, L15, L16,
     LANES, M, MU, PHI, Q, R, STEP, T,
 )  # fmt: skip
-
-# fmt: off
 
 
 @inlined
