@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 
-cli = pytest.importorskip("tracer.cli")
+from tracer import cli
 
 BAD = Path(__file__).parents[1] / "data" / "bad"
 CASES = sorted(path.stem for path in BAD.glob("*.toml"))

@@ -1,10 +1,13 @@
-"""Damaged run files: reading one works or raises InputError of one line, never anything else."""
+"""Damaged run files: reading one works or raises InputError of one line, and the command ends with 0 or 2 alike."""
 
 from __future__ import annotations
 
 import copy
+import io
 import shutil
 import tomllib
+from collections.abc import Iterator
+from contextlib import redirect_stderr, redirect_stdout
 from datetime import UTC, datetime, timedelta, timezone
 from pathlib import Path
 from typing import Any
@@ -15,6 +18,9 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 import tracer
+from tracer import preview
+from tracer import tables as tables_module
+from tracer.cli import main
 from tracer.scenario import Scenario
 
 SHIPPED = Path(tracer.__file__).parent / "scenarios"
@@ -41,19 +47,34 @@ RANGES = st.fixed_dictionaries(
 
 
 @pytest.fixture(scope="module")
-def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
+def folder(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Path]:
     path = tmp_path_factory.mktemp("mutations")
     for history in SHIPPED.glob("*.csv"):
         shutil.copy(history, path)
-    return path
+    with pytest.MonkeyPatch.context() as patch:
+        # a harmless mutation may ask for a billion particles; what `check` computes from a file read is not at stake
+        patch.setattr(preview, "check", lambda scenario: {"title": scenario.title})
+        patch.setattr(tables_module, "preview_text", lambda found: found["title"])
+        yield path
+
+
+def commanded(path: Path) -> tuple[int, str]:
+    """Exit status and stderr of ``driftrose check``."""
+    with redirect_stdout(io.StringIO()), redirect_stderr(io.StringIO()) as said:
+        status = main(["check", str(path)])
+    return status, said.getvalue()
 
 
 def outcome(path: Path) -> Scenario | str:
     """The scenario, or the line of the fault without the file's name."""
+    status, said = commanded(path)
     try:
-        return tracer.load(path)
+        scenario = tracer.load(path)
+        assert (status, said) == (0, "")
+        return scenario
     except tracer.InputError as error:
         line = str(error)
+        assert (status, said) == (2, line + "\n")
         assert line.startswith("driftrose: ")
         assert len(line.splitlines()) == 1
         assert "; " in line
