@@ -17,6 +17,7 @@ _HOMES = {
     "build": "tracer.runfile",
     "trace": "tracer.pipeline",
     "open": "tracer.store",
+    "repack": "tracer.store",
     "invariants": "tracer.adiabatic",
     "from_invariants": "tracer.adiabatic",
     "periods": "tracer.adiabatic",

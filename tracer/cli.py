@@ -119,6 +119,20 @@ def trace(
 
 @command.command()
 @click.argument("file", type=click.Path())
+@click.option("-o", "--output", type=click.Path(), required=True, help="Trajectory file to write.")
+@click.option("--level", type=click.IntRange(1, 9), default=4, show_default=True, help="1: fastest; 9: smallest.")
+@click.option("--overwrite", is_flag=True, help="Replace an existing file, once the new one is whole.")
+def repack(file: str, output: str, level: int, overwrite: bool) -> None:
+    """Write FILE once more, compressed; all numbers stay the same."""
+    from tracer.store import repack as repack_file
+    from tracer.store import size_text
+
+    before, after = repack_file(file, output, level=level, overwrite=overwrite)
+    click.echo(f"wrote {output}: {size_text(after)} in place of {size_text(before)}")
+
+
+@command.command()
+@click.argument("file", type=click.Path())
 @click.option("-o", "--output", "directory", type=click.Path(), default=".", help="Folder for them.  [default: here]")
 @click.option("--format", "format_", type=click.Choice(["png", "svg", "pdf"]), default="png", show_default=True)
 @click.option(

@@ -11,10 +11,10 @@ from fields.field import Field
 from tracer.accuracy import PILOT_SEED, run_pilot, sample, states_of
 from tracer.adiabatic import periods
 from tracer.integrate import advance, compile_kernel
-from tracer.pipeline import CHUNK, chunk_size, processors
+from tracer.pipeline import chunk_size, processors
 from tracer.population import initial_state_at
 from tracer.scenario import Population, Scenario, Species
-from tracer.store import expected_bytes
+from tracer.store import expected_bytes, most_rows
 from tracer.validity import ratios
 
 LOOKED_AT = 256  # particles of each population
@@ -112,7 +112,6 @@ def _work(scenario: Scenario, threads: int) -> dict[str, float]:
 
 def _memory(scenario: Scenario, threads: int) -> int:
     """The interpreter, and for each thread and one more a chunk of tracks before and after it is arranged."""
-    size = chunk_size(scenario.count, threads)
-    assert size <= CHUNK
+    size = min(chunk_size(scenario.count, threads), most_rows(scenario))
     chunk = size * (40.0 + 4.0 * scenario.save_times_h.size) * 8.0
     return int(RESIDENT_BYTES + (threads + 2) * 1.5 * chunk)

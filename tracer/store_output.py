@@ -202,7 +202,7 @@ def _is_at(handle: int, path: Path) -> bool:
 
 
 @contextmanager
-def room_for(path: Path, needed: int) -> Iterator[None]:
+def room_for(path: Path, needed: int, then: str = "the same command with --resume goes on") -> Iterator[None]:
     """A full disk, a quota or a limit on the size of files, met inside, stops the run.
 
     Raises
@@ -219,8 +219,7 @@ def room_for(path: Path, needed: int) -> Iterator[None]:
         problem = "is larger than a file may be" if error.errno == errno.EFBIG else "the disk is full"
         size = size_text(missing)
         amount = f"{missing} bytes are missing" + ("" if size.endswith("bytes") else f" ({size})")
-        advice = "make room, then the same command with --resume goes on"
-        raise Stopped(f"{path}: {problem}: {amount}; {advice}") from error
+        raise Stopped(f"{path}: {problem}: {amount}; make room, then {then}") from error
 
 
 def _missing(path: Path, needed: int, limited: bool) -> int:

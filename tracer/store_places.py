@@ -3,10 +3,8 @@
 from __future__ import annotations
 
 import hashlib
-import itertools
 import os
 from collections.abc import Iterator, Mapping
-from concurrent.futures import ThreadPoolExecutor, wait
 from dataclasses import dataclass
 
 import h5py
@@ -18,7 +16,6 @@ from tracer.store_checksum import CHECKSUM_BYTES, fletcher32
 from tracer.store_log import write_at
 
 DIGEST_LETTERS = 32
-THREADS = 4
 
 
 @dataclass(frozen=True, eq=False)
@@ -29,8 +26,8 @@ class Place:
     ----------
     shape, chunk : tuple of int
         Of the dataset and of a chunk; the first counts particles.
-    offsets : ndarray, shape (chunks down, chunks across)
-        Of the chunks in the file, bytes.
+    offsets, sizes : ndarray, shape (chunks down, chunks across)
+        Where each chunk begins in the file, and the bytes it takes there.
     empty : ndarray of shape `chunk`
         What stands in the part of a chunk that reaches over the dataset's edge.
     """
@@ -38,6 +35,7 @@ class Place:
     shape: tuple[int, ...]
     chunk: tuple[int, ...]
     offsets: NDArray[np.int64]
+    sizes: NDArray[np.int64]
     empty: NDArray[np.generic]
 
     @property
@@ -53,12 +51,19 @@ def places_of(file: h5py.File) -> dict[str, Place]:
 
 
 def _place(dataset: h5py.Dataset) -> Place:
-    grid = [range(0, size, step) for size, step in zip(dataset.shape, dataset.chunks)]
-    corners = itertools.product(*grid)
-    offsets = np.array([dataset.id.get_chunk_info_by_coord(corner).byte_offset for corner in corners])
-    plain = np.dtype(dataset.dtype.str)
-    offsets = offsets.reshape(len(grid[0]), -1)
-    return Place(dataset.shape, dataset.chunks, offsets, np.full(dataset.chunks, dataset.fillvalue, plain))
+    grid = tuple(-(-size // step) for size, step in zip(dataset.shape, dataset.chunks))
+    offsets, sizes = np.zeros(grid, np.int64), np.zeros(grid, np.int64)
+
+    def found(chunk: h5py.h5d.StoreInfo) -> None:
+        at = tuple(first // step for first, step in zip(chunk.chunk_offset, dataset.chunks))
+        offsets[at], sizes[at] = chunk.byte_offset, chunk.size
+
+    dataset.id.chunk_iter(found)
+    if not sizes.all():
+        raise ValueError(f"{dataset.name} has no place for some chunks")
+    across = (grid[0], -1)
+    empty = np.full(dataset.chunks, dataset.fillvalue, np.dtype(dataset.dtype.str))
+    return Place(dataset.shape, dataset.chunks, offsets.reshape(across), sizes.reshape(across), empty)
 
 
 class Stripes:
@@ -76,7 +81,6 @@ class Stripes:
     def __init__(self, handle: int, places: Mapping[str, Place], rows: int) -> None:
         self._handle = handle
         self._rows = rows
-        self._pool = ThreadPoolExecutor(THREADS, "driftrose-writer")
         self.places = places
         self.count = next(iter(places.values())).shape[0]
 
@@ -88,38 +92,20 @@ class Stripes:
         """The stripes that hold particles `first` to `stop` - 1."""
         return range(first // self._rows, -(-stop // self._rows))
 
-    def close(self) -> None:
-        """Wait until nothing writes any more."""
-        self._pool.shutdown(cancel_futures=True)
-
     def write(self, stripe: int, columns: Mapping[str, np.ndarray]) -> str:
-        """Put the rows of a stripe at their places; returns a digest of what stands there.
-
-        Columns with a second axis, by far the largest, are written at the same time.
-        """
+        """Put the rows of a stripe at their places; returns a digest of what stands there."""
         digest = hashlib.sha256()
-        wide = [name for name, place in self.places.items() if len(place.chunk) > 1]
-        started = {name: self._pool.submit(self._write, stripe, self.places[name], columns[name]) for name in wide}
-        try:
-            for name, place in self.places.items():
-                future = started.get(name)
-                digest.update(future.result() if future else self._write(stripe, place, columns[name]))
-        finally:
-            wait(started.values())  # nothing may write on when the file is let go
+        for name, place in self.places.items():
+            for offset, rows, across in self._chunks(stripe, place):
+                data = np.ascontiguousarray(columns[name][(rows, across)[: len(place.chunk)]])
+                if data.shape != place.chunk:
+                    whole = place.empty.copy()
+                    whole[tuple(slice(size) for size in data.shape)] = data
+                    data = whole
+                checksum = fletcher32(data)
+                write_at(self._handle, [data, checksum], offset)
+                digest.update(checksum)
         return digest.hexdigest()[:DIGEST_LETTERS]
-
-    def _write(self, stripe: int, place: Place, column: np.ndarray) -> bytes:
-        """Put the rows of one column at their places; returns their checksums."""
-        checksums = []
-        for offset, rows, across in self._chunks(stripe, place):
-            data = np.ascontiguousarray(column[(rows, across)[: len(place.chunk)]])
-            if data.shape != place.chunk:
-                whole = place.empty.copy()
-                whole[tuple(slice(size) for size in data.shape)] = data
-                data = whole
-            checksums.append(fletcher32(data))
-            write_at(self._handle, [data, checksums[-1]], offset)
-        return b"".join(checksums)
 
     def stands(self, stripe: int, digest: str) -> bool:
         """Whether what `write` put there is what is there."""

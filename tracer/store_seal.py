@@ -18,7 +18,6 @@ from typing import Any, BinaryIO
 
 import numpy as np
 
-from tracer.store_checksum import CHECKSUM_BYTES
 from tracer.store_overlay import Overlay
 from tracer.store_places import Place
 
@@ -71,9 +70,8 @@ def _read(file: BinaryIO, size: int) -> tuple[int, Any] | None:
 def _between(places: Mapping[str, Place], size: int) -> list[list[int]]:
     """First byte and length of everything between the chunks of columns."""
     begins = np.concatenate([place.offsets.reshape(-1) for place in places.values()])
-    lengths = [np.full(place.offsets.size, place.empty.nbytes + CHECKSUM_BYTES) for place in places.values()]
     order = np.argsort(begins)
-    begins, stops = begins[order], (begins + np.concatenate(lengths))[order]
+    begins, stops = begins[order], (begins + np.concatenate([p.sizes.reshape(-1) for p in places.values()]))[order]
     gaps = zip([0, *stops.tolist()], [*begins.tolist(), size])
     return [[begin, stop - begin] for begin, stop in gaps if stop > begin]
 

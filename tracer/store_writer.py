@@ -290,8 +290,6 @@ class TrajectoryWriter:
 
     def _leave(self, error: BaseException | None) -> None:
         """Let go of the files; remove them unless there is something to resume, or the process was told to stop."""
-        if self._stripes is not None:
-            self._stripes.close()
         if self._log is not None:
             self._log.close()
         told = isinstance(error, Stopped) or not (error is None or isinstance(error, Exception))

@@ -372,7 +372,7 @@ def test_a_misused_command_line_keeps_its_usual_text(run: Run, arguments: list[s
 def test_help(run: Run, option: str) -> None:
     done = run(option)
     assert (done.status, done.err) == (0, "")
-    for name in ("new", "models", "check", "trace", "draw"):
+    for name in ("new", "models", "check", "trace", "repack", "draw"):
         assert f"\n  {name} " in done.out
         assert run(name, option).status == 0
 
@@ -437,3 +437,48 @@ def test_a_reader_that_leaves_early_is_no_failure(tmp_path: Path) -> None:
     finally:
         os.close(writer)
     assert (done.returncode, done.stderr) == (0, "")
+
+
+# -------------------------------------------------------------------------------------------------------------- resume
+
+
+def test_resume_of_a_complete_file_says_so(small: Run) -> None:
+    assert small("trace", "storm.toml", "--quiet").status == 0
+    before = Path("storm.h5").read_bytes()
+    assert small("trace", "storm.toml", "--resume") == (0, "storm.h5: complete already, nothing to resume\n", "")
+    found = strictly(small("trace", "storm.toml", "--resume", "--json").out)
+    assert (found["particles"], "seconds" in found) == (40, False)
+    assert Path("storm.h5").read_bytes() == before
+    change("hours = 9.0", "hours = 8.0")
+    assert_fault(small("trace", "storm.toml", "--resume"), "storm.h5: ", "is complete, but of another run")
+
+
+def test_resume_of_nothing(small: Run) -> None:
+    line = "driftrose: storm.h5: nothing to resume; the same command without --resume\n"
+    assert small("trace", "storm.toml", "--resume") == (2, "", line)
+    assert files() == ["storm-kp.csv", "storm.toml"]
+
+
+def test_a_changed_input_is_not_resumed(small: Run, monkeypatch: pytest.MonkeyPatch) -> None:
+    def stop(*_: Any) -> NoReturn:
+        raise KeyboardInterrupt
+
+    with monkeypatch.context() as patched:
+        patched.setattr(pipeline, "run_chunk", stop)
+        assert small("trace", "storm.toml").status == 3
+    assert_fault(small("trace", "storm.toml"), "storm.h5.part: an interrupted run has left what it finished; --resume")
+    history = Path("storm-kp.csv").read_text("utf-8")
+    Path("storm-kp.csv").write_text(history + "\n", "utf-8")
+    assert_fault(small("trace", "storm.toml", "--resume"), "storm.h5.part: storm-kp.csv has changed since it was begun")
+    assert small("trace", "storm.toml", "--overwrite", "--quiet").status == 0
+    assert files() == ["storm-kp.csv", "storm.h5", "storm.toml"]
+
+
+def test_repack(small: Run) -> None:
+    assert small("trace", "storm.toml", "--quiet").status == 0
+    done = small("repack", "storm.h5", "-o", "small.h5", "--level", "9")
+    assert (done.status, done.err) == (0, "")
+    assert done.out.startswith("wrote small.h5: ")
+    one, other = tracer.open("storm.h5"), tracer.open("small.h5")
+    assert one.track["r_re"].tobytes() == other.track["r_re"].tobytes()
+    assert_fault(small("repack", "storm.h5", "-o", "small.h5"), "small.h5: exists; another name")

@@ -24,7 +24,7 @@ from functools import lru_cache
 from importlib.metadata import version
 from pathlib import Path
 from types import ModuleType
-from typing import Any
+from typing import Any, cast
 
 import numpy as np
 
@@ -74,6 +74,14 @@ def kernel_for(field: Field) -> Kernel:
     module, fresh = load_module(text, tuple(function_files(field)))
     edges, segments = driver_table(field.drivers)
     return Kernel(module, constants, edges, segments, fresh)
+
+
+@lru_cache(maxsize=1)
+def word_sums() -> Callable[..., tuple[int, int]]:
+    """The sums behind a checksum, of no field: see ``source/checksum.py``."""
+    load_library()
+    module, _ = load_module("", (), "checksum")
+    return cast(Callable[..., tuple[int, int]], module.word_sums)
 
 
 def point_functions(field: Field) -> Iterator[Callable[..., Any]]:
@@ -195,7 +203,7 @@ def kernel_name(text: str, files: tuple[str, ...]) -> str:
 
 
 @lru_cache(maxsize=32)
-def load_module(text: str, files: tuple[str, ...]) -> tuple[ModuleType, bool]:
+def load_module(text: str, files: tuple[str, ...], entry: str = "advance") -> tuple[ModuleType, bool]:
     """Import the kernel package of a generated field module, writing it first if this user has none."""
     name = kernel_name(text, files)
     folder = cache_root() / name
@@ -207,7 +215,7 @@ def load_module(text: str, files: tuple[str, ...]) -> tuple[ModuleType, bool]:
             stub = ModuleType(package)
             stub.__path__ = [str(path)]
             sys.modules[package] = stub
-    return importlib.import_module(f"{PARENT}.{name}.advance"), fresh
+    return importlib.import_module(f"{PARENT}.{name}.{entry}"), fresh
 
 
 def write_package(folder: Path, text: str) -> None:
