@@ -22,6 +22,7 @@ from pathlib import Path
 import numpy as np
 from bench_contenders import CONTENDERS
 from bench_problems import PITCHES, TARGET_RE, Contender, Problem, problem, tuned
+from bench_size import size
 
 from tracer.pipeline import processors
 from tracer.store_attrs import processor
@@ -106,8 +107,8 @@ def commands(rounds: int) -> None:
         print(f"\nkernel in a new process: {cold_s:.1f} s compiled, {warm_s:.2f} s from the cache, imports included")
         shutil.rmtree(folder / "empty")
         traced = [command("trace", "storm.toml", "--overwrite", "--quiet", folder=folder) for _ in range(rounds)]
-        size = (folder / "storm.h5").stat().st_size
-        print(f"driftrose trace storm.toml, 20,000 particles, {size / 1e6:.0f} MB: {spread(traced, 2)} s")
+        megabytes = (folder / "storm.h5").stat().st_size / 1e6
+        print(f"driftrose trace storm.toml, 20,000 particles, {megabytes:.0f} MB: {spread(traced, 2)} s")
         helped = [command("--help", folder=folder) for _ in range(rounds)]
         print(f"driftrose --help: {spread(helped)} s")
 
@@ -117,8 +118,12 @@ def main() -> None:
     parser.add_argument("--rounds", type=int, default=ROUNDS, help=f"how often each is timed [default: {ROUNDS}]")
     parser.add_argument("--only", metavar="TEXT", default="", help="contenders whose name holds TEXT")
     parser.add_argument("--no-commands", action="store_true", help="leave out the command line")
+    parser.add_argument("--size", action="store_true", help="instead: writing, and the memory of large runs")
     given = parser.parse_args()
     machine()
+    if given.size:
+        size()
+        return
     chosen = [c for c in CONTENDERS if given.only in c.name]
     if not chosen:
         parser.error(f"no contender of that name; there are {json.dumps([c.name for c in CONTENDERS])}")
