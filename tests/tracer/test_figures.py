@@ -346,3 +346,12 @@ def test_time_axes_have_a_few_labels_each_with_its_date(hours: float) -> None:
     labels = [text.get_text() for text in axes.get_xticklabels()]
     assert 2 <= len(labels) <= 10
     assert re.search(r"\d{4}-\d\d-\d\d$", labels[0])
+
+
+@pytest.mark.parametrize(
+    ("sector", "words"),
+    [((0.0, 24.0), "all local times"), ((21.0, 3.0), "21 to 03 MLT"), ((18.0, 24.0), "18 to 00 MLT")],
+)
+def test_the_arrivals_title_names_the_sector(sector: tuple[float, float], words: str) -> None:
+    figure = fitting(synthetic.drifting(n=40, every_min=15.0), r_re=5.0, sector_h=sector)["arrivals"]
+    assert words in joined(drawn_words(figure))

@@ -53,8 +53,8 @@ def _figure(result: Result, arrived: Crossings, every: Crossings, sector: tuple[
     axes.set_xlabel("time of arrival (UTC)")
     axes.grid(True)
     time_ticks(axes, run)
-    place = f"{every.r_re:g} R_E, {_clock(sector[0])} to {_clock(sector[1])} MLT"
-    detail = f"First arrival of each particle in the sector: {arrived.count} of {result.count} particles came"
+    place = f"{every.r_re:g} R_E, {_sector(sector)}"
+    detail = f"First arrival of each particle there: {arrived.count} of {result.count} particles came"
     detail += f", {shown.count} shown." if shown.count < arrived.count else "."
     if chosen:
         detail += " The sector was chosen for its many arrivals."
@@ -86,6 +86,12 @@ def _points(body: SubFigure, axes: Axes, result: Result, warm: Crossings, shown:
     bar.set_label("equatorial pitch angle at arrival (deg)")
     bar.set_ticks([0, 15, 30, 45, 60, 75, 90])
     key(body, entries)
+
+
+def _sector(hours: tuple[float, float]) -> str:
+    if hours[0] != hours[1] and hours[0] % 24.0 == hours[1] % 24.0:
+        return "all local times"
+    return f"{_clock(hours[0])} to {_clock(hours[1])} MLT"
 
 
 def _clock(hour: float) -> str:
