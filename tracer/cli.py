@@ -93,8 +93,6 @@ def trace(
 
     out = output or f"{Path(run).stem}.h5"
     scenario = load(run)
-    for warning in (*scenario.field.warnings(), *scenario.origin.remarks):
-        click.echo(f"{PREFIX}: warning: {warning}", err=True)
     result = trace_run(
         scenario,
         out,
@@ -103,7 +101,7 @@ def trace(
         threads=threads,
         workers=workers,
         scheduler=scheduler,
-        watcher=watcher(quiet),
+        watcher=watcher(quiet, (*scenario.field.warnings(), *scenario.origin.remarks)),
     )
     if as_json:
         click.echo(_json({"file": out, "disk_bytes": Path(out).stat().st_size, **closing(result)}))

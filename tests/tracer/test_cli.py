@@ -266,6 +266,8 @@ def test_a_warning_is_said_once_and_not_on_stdout(small: Run) -> None:
     assert done.err.startswith("driftrose: warning: volland-stern: Kp up to 8.6")
     strictly(done.out)
     assert small("check", "storm.toml").out.count("Kp up to 8.6") == 1
+    # a fault is the only line there is, whatever there is to warn of
+    assert_fault(small("trace", "storm.toml"), "storm.h5: exists; another name for the output, or --overwrite")
 
 
 # -------------------------------------------------------------------------------------------------------------- faults
