@@ -77,7 +77,9 @@ def _page(result: Result, present: list[tuple[str, NDArray[np.int64]]]) -> Figur
     if loose:
         lines.append(entry("saved too seldom to join", marker=".", color=INK, markersize=3))
     key(body, [*_end_entries(causes), *lines], side=len(present) == 1)
-    detail = f"Equatorial crossing points of the drift paths, {VIEW}. Paths chosen evenly over initial energy."
+    detail = f"Equatorial crossing points of the drift paths, {VIEW}."
+    if any(paths.index.size < rows.size for (_, rows), paths in zip(present, drawn)):
+        detail += " Paths chosen evenly over initial energy."
     if loose:
         detail += f" {loose} go round too fast for the saved interval: dots."
     frame(figure, run, "Drift paths, coloured by energy" if warm else "Drift paths of cold plasma", detail)

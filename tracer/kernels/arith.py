@@ -53,7 +53,6 @@ prefer_widest_vectors = cast(Callable[[], None], intrinsic(_widest_vectors))
 
 TWO_PI = 2.0 * math.pi
 INVERSE_TWO_PI = 1.0 / TWO_PI
-EXPONENT_ONE = 1023.0 * 2.0**52  # the bits of 1.0, as a number
 MANTISSA = 2.0**52
 LN2_HIGH, LN2_LOW = 0.693147180369123816490, 1.90821492927058770002e-10  # ln 2 in two parts (Cody & Waite 1980)
 
