@@ -132,12 +132,15 @@ class MagneticTerms:
     foot : callable
         ``(r, sin_phi, cos_phi, foot_re, *arguments) -> B`` where the line meets the sphere of radius foot_re, nT.
     arguments : tuple of float
+    drift_factor : callable, optional
+        ``(r, sin_phi, cos_phi, *arguments) -> 1 / (r B)`` at the equator, where the model knows it without a division.
     """
 
     equator: Callable[..., Any]
     mirror: Callable[..., Any]
     foot: Callable[..., Any]
     arguments: tuple[float, ...] = ()
+    drift_factor: Callable[..., Any] | None = None
 
 
 class LineAverages(Protocol):
@@ -223,6 +226,10 @@ class MagneticModel(Model):
     def terms(self) -> MagneticTerms:
         """What the drift kernel compiles."""
         raise NotImplementedError
+
+    def equatorial_terms(self) -> MagneticTerms:
+        """The same where every particle mirrors at the equator, k = 0: less to compute, in some models."""
+        return self.terms()
 
 
 class ElectricModel(Model):

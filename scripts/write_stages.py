@@ -1,5 +1,4 @@
-"""Write tracer/kernels/source/stages.py: the stages of the method for all lanes at once, from the constants in
-tableau.py.
+"""Write tracer/kernels/source/stages.py: where each stage of the method is evaluated, from the constants in tableau.py.
 
 Straight-line code in which a constant that is zero costs nothing; by hand it would be copied a dozen times.
 """
@@ -12,38 +11,35 @@ from pathlib import Path
 
 SOURCE = Path(__file__).resolve().parent.parent / "tracer" / "kernels" / "source"
 HEAD = '''\
-"""The stages of one step, each for all lanes before the next: written by ``scripts/write_stages.py`` from tableau.py.
+"""Where the stages of a step are evaluated: written by ``scripts/write_stages.py`` from tableau.py.
 
-Within a stage the lanes are independent, so that the processor works on several registers full of them at once; a step
-that went through all stages of one register before the next would wait for itself.
+Each keeps the slopes of the stage before and makes way for its own. Those are computed by the same machine code for all
+stages (`advance.slopes_all`): twelve copies of it would not fit into the processor's store of decoded instructions.
 """
 
 from __future__ import annotations
 
 from typing import Any
 
-from tracer.kernels.arith import inlined, prefer_widest_vectors
+from tracer.kernels.arith import inlined
 
 from . import tableau as tb
-from .drift import slope
-from .field import drivers
 from .layout import (
-    D0, K, {names}
-    LANES, M, MU, PHI, Q, R, STEP, T,
+    {names}
+    KS, LS, PHI, PS, R, RS, STEP, T, TS,
 )  # fmt: skip
 '''
 STAGE = '''
 
 @inlined
-def stage_{i}(W: Any, C: Any) -> None:
-    """Slopes of stage {i}."""
-    prefer_widest_vectors()
-    for lane in range(LANES):
-        h = W[STEP + lane]
-        p = (W[MU + lane], W[K + lane], W[Q + lane], W[M + lane])
+def stage_{i}(lane: Any, W: Any) -> None:
+    """Time and place of stage {i}."""
+    h = W[STEP + lane]
+    k, w = W[KS + lane], W[LS + lane]
+    W[K{last} + lane], W[L{last} + lane] = k, w
+    W[TS + lane] = W[T + lane] + tb.C{i} * h
 {r}
 {p}
-        W[K{i} + lane], W[L{i} + lane] = slope(W[T + lane] + tb.C{i} * h, r, phi, p, C, drivers(W, D0 + lane, LANES))
 '''
 
 
@@ -54,19 +50,25 @@ def constants() -> set[str]:
 
 def sum_of(target: str, base: str, letter: str, stage: int, known: set[str]) -> str:
     terms = [f"tb.A{stage}_{j} * W[{letter}{j} + lane]" for j in range(1, stage) if f"A{stage}_{j}" in known]
-    line = f"{target} = W[{base} + lane] + h * ({' + '.join(terms)})"
-    return "\n".join(textwrap.wrap(line, 116, initial_indent=" " * 8, subsequent_indent=" " * 12))
+    terms[-1] = f"tb.A{stage}_{stage - 1} * {'k' if letter == 'K' else 'w'}"
+    # two sums side by side take half as long as one behind the other
+    half = (len(terms) + 1) // 2 if len(terms) > 3 else len(terms)
+    parts = [" + ".join(part) for part in (terms[:half], terms[half:]) if part]
+    total = parts[0] if len(parts) == 1 else f"({parts[0]}) + ({parts[1]})"
+    line = f"W[{target} + lane] = W[{base} + lane] + h * ({total})"
+    return "\n".join(textwrap.wrap(line, 116, initial_indent=" " * 4, subsequent_indent=" " * 8))
 
 
 def text() -> str:
     """The module, whole."""
     known = constants()
     stages = [*range(2, 13), 14, 15, 16]
-    rows = [f"{letter}{i}" for letter in "KL" for i in range(1, 17)]
+    rows = [f"{letter}{i}" for letter in "KL" for i in range(1, 16)]
     names = "\n    ".join(textwrap.wrap(", ".join(rows) + ",", 110))
     module = HEAD.replace("{names}", names)
     for i in stages:
-        module += STAGE.format(i=i, r=sum_of("r", "R", "K", i, known), p=sum_of("phi", "PHI", "L", i, known))
+        r, phi = sum_of("RS", "R", "K", i, known), sum_of("PS", "PHI", "L", i, known)
+        module += STAGE.format(i=i, last=i - 1, r=r, p=phi)
     return module
 
 

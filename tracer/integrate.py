@@ -40,8 +40,8 @@ class Prepared:
     ----------
     columns : dict of ndarray
         The ``/particle`` columns, invariants included.
-    state : ndarray, shape (n, 7)
-        r, phi, release, mu, k, 1/q, 2/(m c^2); internal units.
+    state : ndarray, shape (n, 8)
+        r, phi, release, mu, k, 1/q, 2/(m c^2), end of tracing; internal units.
     """
 
     columns: dict[str, np.ndarray]
@@ -67,7 +67,8 @@ def _prepared(scenario: Scenario, columns: dict[str, np.ndarray]) -> Prepared:
     k = scenario.field.lines.second_invariant(cot2, r, phi)
     columns["mu_MeV_per_G"] = mu_to_MeV_per_G(mu)
     columns["K_re_sqrtG"] = k_to_re_sqrtG(k)
-    state = np.stack([r, phi, columns["release_h"], mu, k, 1.0 / columns["charge_e"], 2.0 / rest], axis=1)
+    end = np.full_like(r, scenario.end_h)
+    state = np.stack([r, phi, columns["release_h"], mu, k, 1.0 / columns["charge_e"], 2.0 / rest, end], axis=1)
     return Prepared(columns, state)
 
 
@@ -105,7 +106,6 @@ def advance(
     """
     domain = scenario.domain
     rules = (
-        scenario.end_h,
         scenario.direction,
         domain.outer_re,
         domain.inner_re,
@@ -156,10 +156,10 @@ def run_chunk(
 
 def compile_kernel(scenario: Scenario) -> Kernel:
     """The scenario's kernel, ready to run: compiled or loaded from disk by a run over no particle."""
-    kernel = kernel_for(scenario.field)
-    rules = (scenario.end_h, scenario.direction, 2.0, 1.0, 1.0, 0, 1.0)
+    kernel = kernel_for(scenario.field, scenario.equatorial)
+    rules = (scenario.direction, 2.0, 1.0, 1.0, 0, 1.0)
     kernel.module.advance(
-        np.zeros((0, 7)),
+        np.zeros((0, 8)),
         kernel.constants,
         kernel.edges,
         kernel.segments,

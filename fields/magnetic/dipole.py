@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any, ClassVar
 
 import numpy as np
@@ -24,6 +24,12 @@ def equator(r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) -> Any:
 
 
 @pointwise
+def drift_factor(r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) -> Any:
+    """``1 / (r B_eq)``, without its divisions."""
+    return r * r * (inverse_root_b0 * inverse_root_b0)
+
+
+@pointwise
 def mirror(k: Any, r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) -> Any:
     """Mirror field at fixed k, its slopes, and cot^2 of the equatorial pitch angle."""
     kappa = k * inverse_root_b0 * square_root(r)
@@ -32,6 +38,14 @@ def mirror(k: Any, r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) ->
     b = b0 * (inverse * inverse * inverse)
     # kappa goes as sqrt(r): r d(cot2)/dr = kappa/2 d(cot2)/dkappa
     return b * (1.0 + cot2), b * inverse * (0.5 * kappa * slope - 3.0 * (1.0 + cot2)), 0.0 * sin, cot2
+
+
+@pointwise
+def mirror_at_equator(k: Any, r: Any, sin: Any, cos: Any, b0: Any, inverse_root_b0: Any) -> Any:
+    """`mirror` for k = 0."""
+    inverse = reciprocal(r)
+    b = b0 * (inverse * inverse * inverse)
+    return b, -3.0 * b * inverse, 0.0 * sin, 0.0 * r
 
 
 @pointwise
@@ -88,4 +102,8 @@ class Dipole(MagneticModel):
     def terms(self) -> MagneticTerms:
         """See MagneticModel."""
         b0 = self.reference_b0_nT()
-        return MagneticTerms(equator, mirror, foot, (b0, b0**-0.5))
+        return MagneticTerms(equator, mirror, foot, (b0, b0**-0.5), drift_factor)
+
+    def equatorial_terms(self) -> MagneticTerms:
+        """See MagneticModel."""
+        return replace(self.terms(), mirror=mirror_at_equator)

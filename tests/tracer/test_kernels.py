@@ -325,8 +325,7 @@ def test_interpolant_has_order_7(kernel: Kernel) -> None:
     steps, errors = [0.2, 0.28, 0.4, 0.56, 0.8], []
     for h in steps:
         rn, pn, _, stages = motion.trial(t, r, phi, h)
-        kn, ln = motion.slope(t + h, (rn, pn))
-        F = motion.step.interpolant(t, r, phi, h, rn, pn, k1, l1, kn, ln, stages, motion.p, motion.C, motion.D)
+        F = motion.step.interpolant(t, r, phi, h, rn, pn, k1, l1, stages, motion.p, motion.C, motion.D)
         along = motion.step.along
         assert (along(*F[:8], 0.0), along(*F[8:], 0.0)) == (r, phi)
         assert along(*F[:8], 1.0) == pytest.approx(rn, rel=1e-15)

@@ -38,7 +38,7 @@ def one_by_one(run: Scenario, kernel: Kernel, state: np.ndarray, end: np.ndarray
     """The same by the loop over single particles, which searches every step for boundaries."""
     loop: Any = storm_runs.part(kernel, "scalar").advance_one_by_one
     domain, cone = run.domain, CONE_MODES[run.loss_cone]
-    rules = (run.end_h, run.direction, domain.outer_re, domain.inner_re, domain.foot_re, cone, TOLERANCE)
+    rules = (run.direction, domain.outer_re, domain.inner_re, domain.foot_re, cone, TOLERANCE)
     loop(state, kernel.constants, kernel.edges, kernel.segments, rules, run.save_times_h, end, track)
 
 
@@ -92,7 +92,7 @@ def test_neighbours_that_fail_or_stand_still_do_no_harm() -> None:
 
 def test_no_particle_at_all() -> None:
     kernel = compile_kernel(RUN)
-    end, track = advance(RUN, kernel, np.zeros((0, 7)), TOLERANCE, RUN.save_times_h)
+    end, track = advance(RUN, kernel, np.zeros((0, 8)), TOLERANCE, RUN.save_times_h)
     assert end.shape == (0, 10)
     assert track.shape == (0, 4, RUN.save_times_h.size)
 

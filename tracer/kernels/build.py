@@ -28,11 +28,12 @@ from typing import Any, cast
 
 import numpy as np
 
+from fields.contract import MagneticTerms
 from fields.drivers import Driver
 from fields.field import Field
 from fields.units import Floats
 from tracer.kernels import arith
-from tracer.kernels.loading import load_library
+from tracer.kernels.loading import load_library, look_on_disk_first
 from tracer.status import Cause
 
 PARENT = "driftrose_kernels"
@@ -56,7 +57,7 @@ class Kernel:
     segments : ndarray, shape (n_segment, 1 + 2 n_driver)
         Start of the segment, then value there and slope of each driver.
     fresh : bool
-        Whether this process is the first to build it.
+        Whether it had yet to be compiled when this was made; else it stood on the disk.
     """
 
     module: ModuleType
@@ -66,48 +67,60 @@ class Kernel:
     fresh: bool
 
 
-def kernel_for(field: Field) -> Kernel:
-    """Build or load the kernel of `field`."""
+def kernel_for(field: Field, equatorial: bool = False) -> Kernel:
+    """The kernel of `field`, `equatorial` for particles that all mirror at the equator; numba compiles it, or reads it
+    from the disk, when it is first called."""
     load_library()
-    text, constants = field_source(field)
+    text, constants = field_source(field, equatorial)
     arith.register_pointwise()
-    module, fresh = load_module(text, tuple(function_files(field)))
+    module = load_module(text, tuple(function_files(field, equatorial)))
     edges, segments = driver_table(field.drivers)
-    return Kernel(module, constants, edges, segments, fresh)
+    return Kernel(module, constants, edges, segments, not on_disk(module.advance))
 
 
 @lru_cache(maxsize=1)
 def word_sums() -> Callable[..., tuple[int, int]]:
     """The sums behind a checksum, of no field: see ``source/checksum.py``."""
     load_library()
-    module, _ = load_module("", (), "checksum")
+    module = load_module("", (), "checksum", "word_sums")
     return cast(Callable[..., tuple[int, int]], module.word_sums)
 
 
-def point_functions(field: Field) -> Iterator[Callable[..., Any]]:
+def magnetic_terms(field: Field, equatorial: bool) -> MagneticTerms:
+    """The magnetic point functions that a kernel is built from."""
+    return field.magnetic.equatorial_terms() if equatorial else field.magnetic_terms
+
+
+def point_functions(field: Field, equatorial: bool) -> Iterator[Callable[..., Any]]:
     """The point functions of a field, in the order of the generated module."""
-    magnetic = field.magnetic_terms
+    magnetic = magnetic_terms(field, equatorial)
     yield from (magnetic.equator, magnetic.mirror, magnetic.foot)
+    if magnetic.drift_factor is not None:
+        yield magnetic.drift_factor
     yield from (term.function for term in field.electric_terms)
 
 
-def function_files(field: Field) -> Iterator[str]:
+def function_files(field: Field, equatorial: bool) -> Iterator[str]:
     """Source files of the point functions; those of a user's models lie outside both packages."""
-    for function in point_functions(field):
+    for function in point_functions(field, equatorial):
         yield inspect.getsourcefile(function) or ""
 
 
-def field_source(field: Field) -> tuple[str, tuple[float, ...]]:
+def field_source(field: Field, equatorial: bool = False) -> tuple[str, tuple[float, ...]]:
     """Text of the module that joins the point functions, and the constants it takes.
 
     Constants come as arguments and not as literals, so that runs which differ in numbers only share one kernel.
     """
-    constants: list[float] = list(field.magnetic_terms.arguments)
+    magnetic = magnetic_terms(field, equatorial)
+    constants: list[float] = list(magnetic.arguments)
     magnetic_arguments = "".join(f", C[{i}]" for i in range(len(constants)))
-    names = ("equator_", "mirror_", "foot_", *(f"electric_{i}" for i in range(len(field.electric_terms))))
+    quick = magnetic.drift_factor is not None
+    factor = f"drift_factor_(r, s, c{magnetic_arguments})" if quick else "1.0 / (r * equator(r, s, c, C))"
+    electric = [f"electric_{i}" for i in range(len(field.electric_terms))]
+    names = ("equator_", "mirror_", "foot_", *(["drift_factor_"] if quick else []), *electric)
     lines = [
         f"from {function.__module__} import {function.__name__} as {name}"
-        for name, function in zip(names, point_functions(field), strict=True)
+        for name, function in zip(names, point_functions(field, equatorial), strict=True)
     ]
     terms = []
     for i, term in enumerate(field.electric_terms):
@@ -129,6 +142,7 @@ def field_source(field: Field) -> tuple[str, tuple[float, ...]]:
         *("", f"DRIVERS = {len(field.drivers)}"),
         *("", "", "@inlined", "def drivers(W, at, stride):", f"    return ({loads},)"),
         *("", "", "@inlined", "def equator(r, s, c, C):", f"    return equator_(r, s, c{magnetic_arguments})"),
+        *("", "", "@inlined", "def drift_factor(r, s, c, C):", f"    return {factor}"),
         *("", "", "@inlined", "def mirror(k, r, s, c, C):", f"    return mirror_(k, r, s, c{magnetic_arguments})"),
         *("", "", "@inlined", "def foot(r, s, c, foot_re, C):"),
         f"    return foot_(r, s, c, foot_re{magnetic_arguments})",
@@ -137,9 +151,9 @@ def field_source(field: Field) -> tuple[str, tuple[float, ...]]:
     return "\n".join(body), tuple(constants)
 
 
-def program_of(field: Field) -> str:
+def program_of(field: Field, equatorial: bool = False) -> str:
     """Name of the kernel of `field`, which stands for all that its machine code depends on."""
-    return kernel_name(field_source(field)[0], tuple(function_files(field)))
+    return kernel_name(field_source(field, equatorial)[0], tuple(function_files(field, equatorial)))
 
 
 def driver_table(drivers: tuple[Driver, ...]) -> tuple[Floats, Floats]:
@@ -203,19 +217,26 @@ def kernel_name(text: str, files: tuple[str, ...]) -> str:
 
 
 @lru_cache(maxsize=32)
-def load_module(text: str, files: tuple[str, ...], entry: str = "advance") -> tuple[ModuleType, bool]:
-    """Import the kernel package of a generated field module, writing it first if this user has none."""
+def load_module(text: str, files: tuple[str, ...], part: str = "advance", entry: str = "advance") -> ModuleType:
+    """Import a module of the kernel package of a generated field module, writing it first if this user has none."""
     name = kernel_name(text, files)
     folder = cache_root() / name
-    fresh = not folder.is_dir()
-    if fresh:
+    if not folder.is_dir():
         write_package(folder, text)
     for package, path in ((PARENT, folder.parent), (f"{PARENT}.{name}", folder)):
         if package not in sys.modules:
             stub = ModuleType(package)
             stub.__path__ = [str(path)]
             sys.modules[package] = stub
-    return importlib.import_module(f"{PARENT}.{name}.{entry}"), fresh
+    module = importlib.import_module(f"{PARENT}.{name}.{part}")
+    look_on_disk_first(getattr(module, entry))
+    return module
+
+
+def on_disk(function: Any) -> bool:
+    """Whether numba has kept machine code of a function; a process that was killed while it compiled has kept none."""
+    name = f"{function.__module__.rpartition('.')[2]}.{function.__qualname__}"
+    return any(Path(function.stats.cache_path).glob(f"{name}-*.nbc"))
 
 
 def write_package(folder: Path, text: str) -> None:

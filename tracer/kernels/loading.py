@@ -1,10 +1,11 @@
-"""Loading numba's library of functions without scipy's linear algebra, which no kernel calls."""
+"""Numba without what a kernel that stands on the disk does not need: it takes less than half the time to load."""
 
 from __future__ import annotations
 
 import importlib
 import sys
 from types import ModuleType
+from typing import Any
 
 LIBRARY = "numba.np.arraymath"
 BLAS = "scipy.linalg.cython_blas"
@@ -25,3 +26,29 @@ def load_library() -> None:
     finally:
         if sys.modules.get(BLAS) is stand_in:
             del sys.modules[BLAS]
+
+
+def look_on_disk_first(function: Any) -> None:
+    """Have a function with a disk cache look there before numba loads all that it compiles with.
+
+    Numba does so in the other order, which takes a fifth of a second. Of all this, machine code from the disk needs
+    the reference counts only. What is not found there is compiled as ever: numba's compiler sees for itself that
+    everything is loaded.
+    """
+    from numba.core.runtime.nrt import rtsys
+
+    cache = function._cache
+    load = cache.load_overload
+
+    def load_overload(signature: Any, context: Any) -> Any:
+        def first_only() -> None:
+            del context.refresh
+            rtsys.initialize(context)
+
+        context.refresh = first_only  # hides the method; numba holds its lock all the while
+        try:
+            return load(signature, context)
+        finally:
+            vars(context).pop("refresh", None)
+
+    cache.load_overload = load_overload

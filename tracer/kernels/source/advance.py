@@ -1,7 +1,7 @@
 """Particles from release to end: the entry point of a compiled field.
 
-Eight ride in lockstep lanes (`lanes`); a lane whose particle has ended takes the next. What stands here is scalar
-and rare: releasing, corners of drivers, boundaries, ends.
+They ride in lockstep lanes (`lanes`); a lane whose particle has ended takes the next. What stands here is scalar and
+rare: releasing, corners of drivers, boundaries, ends.
 """
 
 from __future__ import annotations
@@ -10,19 +10,19 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import TWO_PI, compiled, entry_point
+from tracer.kernels.arith import TWO_PI, compiled, entry_point, over_lanes
 from tracer.status import Cause
 
-from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, polished
-from .drift import depth_in_cone, motion_at, observed
+from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, shift_to, straight_crossing
+from .drift import depth_in_cone, observed, slope_at
 from .field import drivers
 from .lanes import (
-    CROSSING, ENTERING, MOST_STEPS, SHORTEST, accept_all, begin_all, interpolate_all, interpolate_one, judge_all,
-    observe_row, particle, point_all,
+    CROSSING, ENTERING, LANDING, MOST_STEPS, SAVING, SHORTEST, accept, begin, finish, interpolate, interpolate_one,
+    judge, observe, particle, point, remember, slopes, watch,
 )  # fmt: skip
 from .layout import (
-    R, PHI, T, H, TURNS, MU, K, Q, M, BM, BT, LIVE, ACCEPTED, REJECTED, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, FLAG,
-    K1, L1, F0, F15, STOP, SR, SP, D0, SIZE, LANES,
+    R, PHI, T, H, TURNS, MU, K, Q, M, LIVE, ACCEPTED, REJECTED, UNTIL, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, OK, HN,
+    STOP, CALL, LAND, K1, K12, F0, F15, SR, SP, D0, SIZE, LANES,
 )  # fmt: skip
 from .stages import (
     stage_2, stage_3, stage_4, stage_5, stage_6, stage_7, stage_8, stage_9, stage_10, stage_11, stage_12, stage_14,
@@ -32,10 +32,12 @@ from .stages import (
 DRIFTING, FAILED = int(Cause.DRIFTING), int(Cause.FAILED)
 CONE_OFF, CONE_STOP = 0, 2
 EVER = 1e300  # a time that no run reaches
+SIDE_BY_SIDE = 4  # registers of lanes that the processor works on at once: fewer leave it waiting
 # columns of `end`
 TIME, END_R, END_MLT, END_ENERGY, END_PITCH, CAUSE, TURNED, CONE_TIME, GOOD_STEPS, BAD_STEPS = range(10)
-# rows of the bookkeeping `S`: particle, driver segment, next saved time, cause
-OWNER, SEGMENT, FOLLOWING, FATE = range(4)
+# rows of the bookkeeping `S`: particle, driver segment, next saved time, cause, the limit aimed at, shots at it so far
+OWNER, SEGMENT, FOLLOWING, FATE, AIM, SHOTS = range(6)
+MOST_SHOTS = 6
 
 
 @compiled
@@ -46,18 +48,13 @@ def segment_at(edges: Any, t: Any, sign: Any) -> Any:
 
 
 @compiled
-def enter_segment(
-    W: Any, S: Any, lane: Any, seg: Any, C: Any, edges: Any, segments: Any, t_end: Any, sign: Any
-) -> None:
-    """Give `lane` the drivers of a segment, its end, and the slopes there."""
+def enter_segment(W: Any, S: Any, lane: Any, seg: Any, edges: Any, segments: Any, sign: Any) -> None:
+    """Give `lane` the drivers of a segment, and its end."""
     S[SEGMENT, lane] = seg
     for i in range(segments.shape[1]):
         W[D0 + i * LANES + lane] = segments[seg, i]
-    limit = edges[seg + 1] if sign > 0.0 else edges[seg]
-    W[LIMIT + lane] = limit if sign * (t_end - limit) > 0.0 else t_end
-    t, r, phi = W[T + lane], W[R + lane], W[PHI + lane]
-    k1, l1, bm, bt = motion_at(t, r, phi, particle(W, lane), C, drivers(W, D0 + lane, LANES))
-    W[K1 + lane], W[L1 + lane], W[BM + lane], W[BT + lane] = k1, l1, bm, bt
+    limit, until = edges[seg + 1] if sign > 0.0 else edges[seg], W[UNTIL + lane]
+    W[LIMIT + lane] = limit if sign * (until - limit) > 0.0 else until
 
 
 @compiled
@@ -66,15 +63,16 @@ def release(
     track: Any,
 ) -> None:  # fmt: skip
     """Put particle `i` into `lane`; its fate is other than DRIFTING when it ends at once."""
-    t_end, sign, outer, inner, foot_re, cone, tolerance = rules
+    sign, outer, inner, foot_re, cone, tolerance = rules
     r, phi, t = P[i, 0], P[i, 1], P[i, 2]
     W[R + lane], W[PHI + lane], W[T + lane] = r, phi, t
     W[MU + lane], W[K + lane], W[Q + lane], W[M + lane] = P[i, 3], P[i, 4], P[i, 5], P[i, 6]
-    W[TURNS + lane], W[ACCEPTED + lane], W[REJECTED + lane], W[WATCH + lane] = 0.0, 0.0, 0.0, 0.0
+    W[TURNS + lane], W[ACCEPTED + lane], W[REJECTED + lane], W[WATCH + lane], W[LAND + lane] = 0.0, 0.0, 0.0, 0.0, 0.0
+    W[LIVE + lane], W[UNTIL + lane] = 1.0, P[i, 7]
     S[OWNER, lane], S[FATE, lane] = i, DRIFTING
-    enter_segment(W, S, lane, segment_at(edges, t, sign), C, edges, segments, t_end, sign)
-    k1 = W[K1 + lane]
-    W[H + lane] = initial_step(k1, W[L1 + lane], tolerance)
+    enter_segment(W, S, lane, segment_at(edges, t, sign), edges, segments, sign)
+    k1, l1 = slope_at(t, r, phi, particle(W, lane), C, drivers(W, D0 + lane, LANES))
+    W[H + lane] = initial_step(k1, l1, tolerance)
     j = first_saved(times, t, sign)
     if j < times.size and times[j] == t:
         track[i, 0, j], track[i, 1, j] = r, phi
@@ -102,42 +100,69 @@ def first_saved(times: Any, t: Any, sign: Any) -> Any:
 
 
 @compiled
-def meet(W: Any, lane: Any, C: Any, rules: Any, end: Any, i: Any) -> Any:
-    """What the particle in `lane` met within its accepted step: DRIFTING, or the cause of its end, which is then
-    the step's end."""
-    _, _, outer, inner, foot_re, cone, _ = rules
-    flag = int(W[FLAG + lane])
+def sight(W: Any, lane: Any, C: Any, rules: Any, interpolated: Any) -> Any:
+    """What the particle in `lane` meets first within its accepted step, and at which fraction of it: `NEVER` if
+    nothing."""
+    _, outer, inner, foot_re, _, _ = rules
+    call = int(W[CALL + lane])
+    r, rn, k1, k12 = W[R + lane], W[RN + lane], W[K1 + lane], W[K12 + lane]
+    if call & int(ENTERING) == 0 and k1 * k12 > 0.0:
+        if r < outer <= rn:
+            return straight_crossing(r, rn, W[STEP + lane], k1, k12, outer), OUTER
+        if r > inner >= rn:
+            return straight_crossing(r, rn, W[STEP + lane], k1, k12, inner), INNER
+    if not interpolated:
+        interpolate_one(W, lane, C)
     F = W[F0 + lane : F15 + lane + 1 : LANES]
-    p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
-    t, r, phi, h = W[T + lane], W[R + lane], W[PHI + lane], W[STEP + lane]
-    k1, l1 = W[K1 + lane], W[L1 + lane]
-    x, which, cone_x = NEVER, DRIFTING, NEVER
-    if flag & int(CROSSING):
+    p = particle(W, lane)
+    x, which = NEVER, DRIFTING
+    if call & int(CROSSING):
         x, which = first_crossing(OUTER, F, outer, inner, foot_re, p, C), OUTER
         other = first_crossing(INNER, F, outer, inner, foot_re, p, C)
         if other < x:
             x, which = other, INNER
-    if flag & int(ENTERING):
-        cone_x = first_crossing(CONE, F, outer, inner, foot_re, p, C)
-    if cone_x < NEVER and cone_x <= x:
-        at, re, pe = polished(CONE, cone_x, t, r, phi, h, k1, l1, outer, inner, foot_re, p, C, D)
-        end[i, CONE_TIME] = t + at
-        W[WATCH + lane] = 0.0
-        if cone == CONE_STOP:
-            return end_step(W, lane, CONE, t + at, re, pe)
-    if x >= NEVER:
-        return DRIFTING
-    at, _, pe = polished(which, x, t, r, phi, h, k1, l1, outer, inner, foot_re, p, C, D)
-    return end_step(W, lane, which, t + at, outer if which == OUTER else inner, pe)
+    if call & int(ENTERING):
+        other = first_crossing(CONE, F, outer, inner, foot_re, p, C)
+        if other < NEVER and other <= x:
+            x, which = other, CONE
+    return x, which
 
 
 @compiled
-def end_step(W: Any, lane: Any, cause: Any, t: Any, r: Any, phi: Any) -> Any:
-    """Let the step of `lane` end early; returns `cause`."""
-    # saved times come from the interpolant up to here; none of them is this end itself
-    W[STOP + lane] = t
-    W[TN + lane], W[RN + lane], W[PN + lane] = t, r, phi
-    return cause
+def retake(W: Any, lane: Any, length: Any) -> None:
+    """Take the step back; the next one is to have this length, or with 0 the one it had."""
+    W[LAND + lane], W[HN + lane], W[OK + lane] = length, W[H + lane], 0.0
+    W[STOP + lane] = W[T + lane] - W[STEP + lane]
+    W[REJECTED + lane] = W[REJECTED + lane] - 1.0  # it was not
+
+
+@compiled
+def land(W: Any, S: Any, lane: Any, C: Any, rules: Any, end: Any) -> None:
+    """The step ended next to the limit it was aimed at: end there, or aim once more.
+
+    A last shift of less than 1e-6 of the step is taken to first order. At a touch the rate vanishes, and the place
+    found on the interpolant stands.
+    """
+    _, outer, inner, foot_re, cone, _ = rules
+    which, step = S[AIM, lane], W[STEP + lane]
+    t, r, phi = W[TN + lane], W[RN + lane], W[PN + lane]
+    p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
+    shift, by_r, by_phi = shift_to(which, t, r, phi, step, outer, inner, foot_re, p, C, D)
+    S[SHOTS, lane] += 1
+    if 1e-6 * abs(step) <= abs(shift) < 0.5 * abs(step) and S[SHOTS, lane] < MOST_SHOTS:
+        retake(W, lane, step + shift)
+        return
+    if abs(shift) < 1e-6 * abs(step):
+        t, r, phi = t + shift, r + by_r * shift, phi + by_phi * shift
+    if which == CONE:
+        end[S[OWNER, lane], CONE_TIME] = t
+        W[WATCH + lane] = 0.0
+        if cone != CONE_STOP:
+            retake(W, lane, 0.0)
+            return
+    r = outer if which == OUTER else (inner if which == INNER else r)
+    W[STOP + lane], W[TN + lane], W[RN + lane], W[PN + lane] = t, t, r, phi
+    S[FATE, lane] = which
 
 
 @compiled
@@ -160,65 +185,82 @@ def refill(
         while S[OWNER, lane] < 0 and taken < P.shape[0]:
             release(W, S, lane, taken, P, C, edges, segments, rules, times, end, track)
             taken += 1
-            W[LIVE + lane] = 1.0
-            if S[FATE, lane] != DRIFTING or W[T + lane] == rules[0]:
+            if S[FATE, lane] != DRIFTING or W[T + lane] == W[UNTIL + lane]:
                 conclude(W, S, lane, P, C, end)
     return taken
 
 
 @compiled
-def due(W: Any, S: Any, sign: Any) -> Any:
-    """Whether any lane's step passes a time to save."""
-    for lane in range(LANES):  # noqa: SIM110 - numba has no any()
-        if S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
-            return True
-    return False
-
-
-@compiled
-def meet_all(W: Any, S: Any, C: Any, rules: Any, interpolated: Any, end: Any) -> None:
-    """Before the step is taken: what did each lane that may have met something meet within it?"""
+def callers(W: Any, who: Any) -> Any:
+    """List the lanes that call for scalar code in `who`; returns how many they are, and all their calls together."""
+    n, calls = 0, 0
     for lane in range(LANES):
-        if S[OWNER, lane] >= 0 and W[FLAG + lane] > 0.0:
-            if not interpolated:
-                interpolate_one(W, lane, C)
-            S[FATE, lane] = meet(W, lane, C, rules, end, S[OWNER, lane])
+        call = int(W[CALL + lane])
+        who[n] = lane
+        n += 1 if call > 0 else 0
+        calls |= call
+    return n, calls
 
 
 @compiled
-def save_all(W: Any, S: Any, sign: Any, times: Any, track: Any) -> None:
-    """Save every time that the lanes' steps passed."""
-    while due(W, S, sign):
-        point_all(W)
-        for lane in range(LANES):
-            if S[OWNER, lane] >= 0 and sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
-                i, j = S[OWNER, lane], S[FOLLOWING, lane]
-                track[i, 0, j], track[i, 1, j] = W[SR + lane], W[SP + lane]
-                S[FOLLOWING, lane] = j + 1
-                W[NEXT + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
+def meet_all(W: Any, S: Any, who: Any, C: Any, rules: Any, interpolated: Any, end: Any) -> None:
+    """Before the step is taken: did it end where a limit is, or does it lead over one?"""
+    for lane in who:
+        call = int(W[CALL + lane])
+        if call & int(LANDING):
+            land(W, S, lane, C, rules, end)
+        elif call & int(CROSSING + ENTERING):
+            x, which = sight(W, lane, C, rules, interpolated)
+            if x < NEVER:
+                S[AIM, lane], S[SHOTS, lane] = which, 0
+                retake(W, lane, x * W[STEP + lane])
 
 
 @compiled
-def settle_all(W: Any, S: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, end: Any) -> Any:
+def save_next(W: Any, S: Any, who: Any, sign: Any, times: Any, track: Any) -> Any:
+    """Save the points at the lanes' next times that their steps have passed; returns whether a step passed more."""
+    more = False
+    for lane in who:
+        if sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
+            i, j = S[OWNER, lane], S[FOLLOWING, lane]
+            track[i, 0, j], track[i, 1, j] = W[SR + lane], W[SP + lane]
+            S[FOLLOWING, lane] = j + 1
+            W[NEXT + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
+            more = more or sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0
+    return more
+
+
+@compiled
+def settle_all(W: Any, S: Any, who: Any, P: Any, C: Any, edges: Any, segments: Any, sign: Any, end: Any) -> Any:
     """After the step: end what has ended, and take the others over the corners; returns whether a lane became
     idle."""
-    t_end, sign = rules[0], rules[1]
     idle = False
-    for lane in range(LANES):
-        if S[OWNER, lane] < 0:
-            continue
+    for lane in who:
         t = W[T + lane]
         if S[FATE, lane] == DRIFTING and (
             W[H + lane] < SHORTEST or W[ACCEPTED + lane] + W[REJECTED + lane] > MOST_STEPS
         ):
             S[FATE, lane] = FAILED
-        if S[FATE, lane] != DRIFTING or t == t_end:
+        if S[FATE, lane] != DRIFTING or t == W[UNTIL + lane]:
             conclude(W, S, lane, P, C, end)
             idle = True
         elif t == W[LIMIT + lane]:
-            seg = S[SEGMENT, lane] + (1 if sign > 0.0 else -1)
-            enter_segment(W, S, lane, seg, C, edges, segments, t_end, sign)
+            enter_segment(W, S, lane, S[SEGMENT, lane] + (1 if sign > 0.0 else -1), edges, segments, sign)
     return idle
+
+
+@compiled
+def slopes_all(W: Any, C: Any) -> None:
+    """The slopes of the present stage in all lanes: one piece of machine code, for it is long and called often."""
+    over_lanes(slopes, LANES, SIDE_BY_SIDE, (W, C))
+
+
+@compiled
+def aligned(size: Any) -> Any:
+    """Zeros that begin where a vector register of the widest kind may be loaded at once."""
+    room = np.zeros(size + 8)
+    skipped = (-(room.ctypes.data // 8)) % 8
+    return room[skipped : skipped + size]
 
 
 @entry_point
@@ -227,14 +269,14 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
 
     Parameters
     ----------
-    P : (n, 7)
-        r, phi, release, mu, k, 1/q, 2/(m c^2).
+    P : (n, 8)
+        r, phi, release, mu, k, 1/q, 2/(m c^2), end.
     C : tuple
         Constants of the field.
     edges, segments : (n_segment + 1,), (n_segment, 1 + 2 n_driver)
         Corners and drivers.
     rules : tuple
-        End of the run, +-1, outer, inner and foot radius, cone mode, tolerance.
+        Sign of time, outer, inner and foot radius, cone mode, tolerance.
     times : (n_time,)
         To save.
     end : (n, 10)
@@ -242,42 +284,64 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
     track : (n, 4, n_time)
         Takes r, mlt, energy, pitch; filled with NaN before.
     """
-    _, sign, outer, inner, foot_re, _, tolerance = rules
-    W, S = np.zeros(SIZE), np.zeros((4, LANES), np.int64)
+    sign, _, _, foot_re, cone, tolerance = rules
+    W, S, who = aligned(SIZE), np.zeros((6, LANES), np.int64), np.zeros(LANES, np.int64)
     W[R : R + LANES], W[Q : Q + LANES], W[H : H + LANES] = 5.0, 1.0, 1.0  # a place where a lane may rest
     W[LIMIT : LIMIT + LANES] = sign * EVER
     S[OWNER] = -1
     taken = refill(W, S, 0, P, C, edges, segments, rules, times, end, track)
     busy = np.max(S[OWNER]) >= 0
     while busy:
-        # called one by one: numba optimises whatever is nested anew at every level
-        begin_all(W, sign)
-        stage_2(W, C)
-        stage_3(W, C)
-        stage_4(W, C)
-        stage_5(W, C)
-        stage_6(W, C)
-        stage_7(W, C)
-        stage_8(W, C)
-        stage_9(W, C)
-        stage_10(W, C)
-        stage_11(W, C)
-        stage_12(W, C)
-        calls = judge_all(W, C, sign, 1.0 / tolerance, outer, inner, foot_re)
-        if calls > 0:
-            saving = due(W, S, sign)
-            if saving:
-                stage_14(W, C)
-                stage_15(W, C)
-                stage_16(W, C)
-                interpolate_all(W, C)
-            meet_all(W, S, C, rules, saving, end)
-            if saving:
-                save_all(W, S, sign, times, track)
-        accept_all(W)
-        if calls > 0 and settle_all(W, S, P, C, edges, segments, rules, end):
+        over_lanes(begin, LANES, 1, (W, sign))
+        slopes_all(W, C)
+        over_lanes(remember, LANES, 1, (W,))
+        over_lanes(stage_2, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_3, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_4, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_5, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_6, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_7, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_8, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_9, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_10, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_11, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(stage_12, LANES, 2, (W,))
+        slopes_all(W, C)
+        over_lanes(judge, LANES, 2, (W, rules, 1.0 / tolerance))
+        if cone != CONE_OFF:
+            over_lanes(watch, LANES, 2, (W, C, foot_re))
+        n, calls = callers(W, who)
+        if calls & int(SAVING):
+            over_lanes(finish, LANES, 1, (W,))
+            slopes_all(W, C)
+            over_lanes(stage_14, LANES, 2, (W,))
+            slopes_all(W, C)
+            over_lanes(stage_15, LANES, 2, (W,))
+            slopes_all(W, C)
+            over_lanes(stage_16, LANES, 2, (W,))
+            slopes_all(W, C)
+            over_lanes(interpolate, LANES, 2, (W,))
+        if calls & int(CROSSING + ENTERING + LANDING):
+            meet_all(W, S, who[:n], C, rules, calls & int(SAVING), end)
+        more = (calls & int(SAVING)) > 0
+        while more:
+            over_lanes(point, LANES, 2, (W,))
+            more = save_next(W, S, who[:n], sign, times, track)
+        over_lanes(accept, LANES, 1, (W,))
+        if n > 0 and settle_all(W, S, who[:n], P, C, edges, segments, sign, end):
             taken = refill(W, S, taken, P, C, edges, segments, rules, times, end, track)
             busy = np.max(S[OWNER]) >= 0
     if times.size > 0:
         for i in range(P.shape[0]):
-            observe_row(track[i, 0], track[i, 1], track[i, 2], track[i, 3], (P[i, 3], P[i, 4], P[i, 5], P[i, 6]), C)
+            r, phi, energy, pitch = track[i, 0], track[i, 1], track[i, 2], track[i, 3]
+            over_lanes(observe, times.size, 2, (r, phi, energy, pitch, (P[i, 3], P[i, 4], P[i, 5], P[i, 6]), C))

@@ -10,14 +10,17 @@ from tracer.kernels.arith import compiled
 from tracer.status import Cause
 
 from .drift import depth_in_cone, slope_at
-from .step import along, trial_at
+from .step import along
 
 OUTER, INNER, CONE = int(Cause.OUTER), int(Cause.INNER), int(Cause.ATMOSPHERE)
 
 SAMPLES = 8  # of the interpolant of one step: a smooth piece of path, at most a fraction of a turn
-BISECTIONS = 50
-SHRINKS = 40
-POLISHINGS = 3
+SECANTS = 30
+NEAR = 1e-9  # fractions of a step
+SHRINKS = 24  # leaves 1e-5 of a step: a graze is missed where it is less than 1e-10 of the path deep
+GOLDEN = 0.6180339887498949
+SLIGHT = 1e-3  # of a step
+AIMED = 1e-4  # the same, of a path that is only aimed at
 NEVER = 2.0  # a fraction beyond the end of the step
 
 
@@ -45,28 +48,40 @@ def excess_along(which: Any, F: Any, x: Any, outer: Any, inner: Any, foot_re: An
 
 @compiled
 def highest(which: Any, F: Any, a: Any, b: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
-    """Fraction between `a` and `b` where the excess is largest."""
+    """Fraction between `a` and `b` where the excess is largest, by golden sections."""
+    x, y = b - GOLDEN * (b - a), a + GOLDEN * (b - a)
+    gx = excess_along(which, F, x, outer, inner, foot_re, p, C)
+    gy = excess_along(which, F, y, outer, inner, foot_re, p, C)
     for _ in range(SHRINKS):
-        left, right = a + 0.382 * (b - a), a + 0.618 * (b - a)
-        rising = excess_along(which, F, right, outer, inner, foot_re, p, C) - excess_along(
-            which, F, left, outer, inner, foot_re, p, C
-        )
-        if rising > 0.0:
-            a = left
+        if gy > gx:
+            a, x, gx = x, y, gy
+            y = a + GOLDEN * (b - a)
+            gy = excess_along(which, F, y, outer, inner, foot_re, p, C)
         else:
-            b = right
-    return 0.5 * (a + b)
+            b, y, gy = y, x, gx
+            x = b - GOLDEN * (b - a)
+            gx = excess_along(which, F, x, outer, inner, foot_re, p, C)
+    return x if gx > gy else y
 
 
 @compiled
-def root(which: Any, F: Any, a: Any, b: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
-    """Fraction between `a`, where the excess is negative, and `b`, where it is not, at which it turns."""
-    for _ in range(BISECTIONS):
-        middle = 0.5 * (a + b)
-        if excess_along(which, F, middle, outer, inner, foot_re, p, C) < 0.0:
-            a = middle
+def root(
+    which: Any, F: Any, a: Any, b: Any, ga: Any, gb: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any
+) -> Any:
+    """Fraction between `a`, where the excess `ga` is negative, and `b`, where `gb` is not, at which it turns.
+
+    The Illinois method (Dowell & Jarratt 1971), down to what a step on the true path is started from.
+    """
+    for _ in range(SECANTS):
+        x = b - gb * (b - a) / (gb - ga)
+        g = excess_along(which, F, x, outer, inner, foot_re, p, C)
+        if g == 0.0 or abs(x - b) < NEAR:
+            return x
+        if (g < 0.0) == (gb < 0.0):
+            ga = 0.5 * ga
         else:
-            b = middle
+            a, ga = b, gb
+        b, gb = x, g
     return b
 
 
@@ -75,51 +90,63 @@ def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: 
     """Smallest fraction of the step at which the excess turns from negative to positive; NEVER if it does not.
 
     Between samples that are all negative the path may touch the limit and return. Next to the largest of three
-    neighbours it rises by less than they differ; only if that could reach the limit is the summit searched for.
+    neighbours it rises by less than half of what they differ; only if that could reach the limit is the summit
+    searched for. Before the second sample and after the last but one it has a summit if it turns there.
     """
     before = ga = excess_along(which, F, 0.0, outer, inner, foot_re, p, C)
+    rising = excess_along(which, F, SLIGHT, outer, inner, foot_re, p, C) > ga
     width = 1.0 / SAMPLES
     for i in range(1, SAMPLES + 1):
         b = i * width
         gb = excess_along(which, F, b, outer, inner, foot_re, p, C)
         if ga < 0.0 <= gb:
-            return root(which, F, b - width, b, outer, inner, foot_re, p, C)
+            return root(which, F, b - width, b, ga, gb, outer, inner, foot_re, p, C)
         top, lowest = max(before, ga, gb), min(before, ga, gb)
-        summit = ga >= before or i == 2 or i == SAMPLES
-        if i > 1 and before < 0.0 and top < 0.0 and summit and top + (top - lowest) >= 0.0:
+        summit = ga >= max(before, gb) or (i == 2 and rising and before >= ga)
+        if i == SAMPLES and gb >= ga:
+            summit = excess_along(which, F, 1.0 - SLIGHT, outer, inner, foot_re, p, C) > gb
+        if i > 1 and before < 0.0 and top < 0.0 and summit and top + 0.5 * (top - lowest) >= 0.0:
             start = max(b - 2.0 * width, 0.0)
             x = highest(which, F, start, b, outer, inner, foot_re, p, C)
-            if excess_along(which, F, x, outer, inner, foot_re, p, C) >= 0.0:
-                return root(which, F, start, x, outer, inner, foot_re, p, C)
+            gx = excess_along(which, F, x, outer, inner, foot_re, p, C)
+            if gx >= 0.0:
+                g0 = excess_along(which, F, start, outer, inner, foot_re, p, C)
+                return root(which, F, start, x, g0, gx, outer, inner, foot_re, p, C)
         before, ga = ga, gb
     return NEVER
 
 
 @compiled
-def polished(
-    which: Any, x: Any, t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any,
-    outer: Any, inner: Any, foot_re: Any, p: Any, C: Any, D: Any,
+def shift_to(
+    which: Any, t: Any, r: Any, phi: Any, h: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any, D: Any
 ) -> Any:  # fmt: skip
-    """Step length, r and phi at the crossing near fraction `x`: as accurate as the path itself.
+    """Newton's step in time from the end of a step of length `h` to the limit, and the slopes there."""
+    by_r, by_phi = slope_at(t, r, phi, p, C, D)
+    small = 1e-5 * h
+    g = excess(which, r, phi, outer, inner, foot_re, p, C)
+    rate = (excess(which, r + by_r * small, phi + by_phi * small, outer, inner, foot_re, p, C) - g) / small
+    return -g / rate, by_r, by_phi
 
-    Newton's method on true steps, from the interpolant's point; a last shift of less than 1e-6 of the step is taken
-    to first order.
-    """
-    step = x * h
-    for _ in range(POLISHINGS):
-        re, pe = trial_at(t, r, phi, step, k1, l1, p, C, D)
-        ke, le = slope_at(t + step, re, pe, p, C, D)
-        small = 1e-5 * h
-        g = excess(which, re, pe, outer, inner, foot_re, p, C)
-        rate = (excess(which, re + ke * small, pe + le * small, outer, inner, foot_re, p, C) - g) / small
-        shift = -g / rate
-        if not abs(shift) < 1e-2 * abs(h):  # a touch: the rate vanishes, the interpolant's point stands
-            return step, re, pe
-        if abs(shift) < 1e-6 * abs(h):
-            return step + shift, re + ke * shift, pe + le * shift
-        step = step + shift
-    re, pe = trial_at(t, r, phi, step, k1, l1, p, C, D)
-    return step, re, pe
+
+@compiled
+def straight_crossing(r: Any, rn: Any, h: Any, k: Any, kn: Any, limit: Any) -> Any:
+    """Fraction of a step at which a path that only rises, or only falls, passes `limit`: from the cubic through its
+    ends, a place to aim at."""
+    a, b, ga, gb = 0.0, 1.0, r - limit, rn - limit
+    x = b
+    for _ in range(SECANTS):
+        last = x
+        x = b - gb * (b - a) / (gb - ga)
+        y = 1.0 - x
+        g = r * y + rn * x + x * y * (h * (k * y - kn * x) + (rn - r) * (x - y)) - limit
+        if abs(x - last) < AIMED:
+            break
+        if (g < 0.0) == (gb < 0.0):
+            ga = 0.5 * ga
+        else:
+            a, ga = b, gb
+        b, gb = x, g
+    return x
 
 
 @compiled

@@ -14,7 +14,7 @@ import numpy as np
 from fields.constants import KV_PER_NT_RE2_TO_PER_H
 from tracer.kernels.arith import arc_tangent, compiled, inlined, inverse_root, sincos
 
-from .field import equator, foot, mirror, potential
+from .field import drift_factor, foot, mirror, potential
 
 
 @inlined
@@ -30,17 +30,9 @@ def motion(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
     _, e_r, e_phi = potential(r, s, c, t, C, D)
     # dW/dB_m = mu / gamma, gamma^2 = 1 + 2 mu B_m / (m c^2)
     w = mu * inverse_charge * inverse_root(1.0 + mu * bm * inverse_half_rest)
-    f = KV_PER_NT_RE2_TO_PER_H / (equator(r, s, c, C) * r)
+    f = KV_PER_NT_RE2_TO_PER_H * drift_factor(r, s, c, C)
     by_r, by_phi = -f * (w * bm_phi + e_phi), f * (w * bm_r + e_r)
     return by_r, by_phi, bm, bm_r * by_r + bm_phi * by_phi
-
-
-@inlined
-def motion_and_foot(t: Any, r: Any, phi: Any, foot_re: Any, p: Any, C: Any, D: Any) -> Any:
-    """`motion`, and B at the foot of the line."""
-    s, c = sincos(phi)
-    by_r, by_phi, bm, bt = motion(t, r, phi, p, C, D)
-    return by_r, by_phi, bm, bt, foot(r, s, c, foot_re, C)
 
 
 @inlined
@@ -48,12 +40,6 @@ def slope(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
     """dr/dt and dphi/dt alone."""
     by_r, by_phi, _, _ = motion(t, r, phi, p, C, D)
     return by_r, by_phi
-
-
-@compiled
-def motion_at(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
-    """`motion`, for scalar code."""
-    return motion(t, r, phi, p, C, D)
 
 
 @compiled

@@ -1,6 +1,7 @@
-"""The vectorised part: every lane takes one step, straight line, selects only. No branch, no call into a library.
+"""The vectorised part: what happens in one lane, straight line, selects only. No branch, no call into a library.
 
-A lane's arithmetic never looks at its neighbours, so a particle's bits do not depend on which lane it rode in.
+`tracer.kernels.arith.over_lanes` runs each of these over all lanes at once. A lane's arithmetic never looks at its
+neighbours, so a particle's bits do not depend on which lane it rode in.
 """
 
 from __future__ import annotations
@@ -9,15 +10,15 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import TWO_PI, compiled, inlined, prefer_widest_vectors, rough_power
+from tracer.kernels.arith import TWO_PI, compiled, inlined, rough_power, sincos
 
-from .drift import motion_and_foot, observed
-from .field import drivers
+from .drift import motion, observed
+from .field import drivers, foot
 from .layout import (
-    R, PHI, T, H, TURNS, MU, K, Q, M, BM, BT, LIVE, ACCEPTED, REJECTED, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, BMN,
-    BTN, OK, HN, FLAG, K1, K6, K7, K8, K9, K10, K11, K12, K13, K14, K15, K16, L1, L6, L7, L8, L9, L10, L11, L12,
-    L13, L14, L15, L16, F0, F1, F2, F3, F4, F5, F6, F7, F8, F9, F10, F11, F12, F13, F14, F15, STOP, SR, SP, D0,
-    LANES,
+    R, PHI, T, H, TURNS, MU, K, Q, M, LIVE, ACCEPTED, REJECTED, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, OK, HN, STOP,
+    LAND, BM, BT, TS, RS, PS, KS, LS, BS, BTS, CALL, K1, K6, K7, K8, K9, K10, K11, K12, K13, K14, K15, L1, L6, L7, L8,
+    L9, L10, L11, L12, L13, L14, L15, F0, F1, F2, F3, F4, F5, F6, F7, F8, F9, F10, F11, F12, F13, F14, F15, SR, SP,
+    D0, LANES,
 )  # fmt: skip
 from .step import along, coefficients, interpolant, solution
 
@@ -28,7 +29,7 @@ LONGEST, SHORTEST = 1e3, 1e-13  # steps, hours
 MOST_STEPS = 2e7
 STRAIGHT = 0.1  # of that bound, where the speed keeps its sign
 NEAR_CONE = 0.8  # of the foot field: leaves room for how that changes within a step
-CROSSING, ENTERING = 1.0, 2.0  # bits of FLAG
+CROSSING, ENTERING, SAVING, SETTLING, LANDING = 1.0, 2.0, 4.0, 8.0, 16.0  # bits of CALL
 
 
 @inlined
@@ -51,65 +52,87 @@ def stages_of(W: Any, lane: Any) -> Any:
 @inlined
 def late_stages_of(W: Any, lane: Any) -> Any:
     """Stages 14 to 16 of `lane`."""
-    return W[K14 + lane], W[K15 + lane], W[K16 + lane], W[L14 + lane], W[L15 + lane], W[L16 + lane]
+    return W[K14 + lane], W[K15 + lane], W[KS + lane], W[L14 + lane], W[L15 + lane], W[LS + lane]
 
 
 @inlined
-def begin_all(W: Any, sign: Any) -> None:
-    """The length of every lane's step; up to a corner rather two even steps than a long one and a sliver."""
-    prefer_widest_vectors()
-    for lane in range(LANES):
-        t, h, limit = W[T + lane], W[H + lane], W[LIMIT + lane]
-        left = sign * (limit - t)
-        step = sign * (left if h >= left else (0.5 * left if h > 0.5 * left else h))
-        W[STEP + lane] = step
-        W[TN + lane] = limit if h >= left else t + step
+def slopes(lane: Any, W: Any, C: Any) -> None:
+    """The slopes of the present stage, its mirror field and the rate of that."""
+    p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
+    W[KS + lane], W[LS + lane], W[BS + lane], W[BTS + lane] = motion(W[TS + lane], W[RS + lane], W[PS + lane], p, C, D)
 
 
 @inlined
-def judge_all(W: Any, C: Any, sign: Any, inverse_tolerance: Any, outer: Any, inner: Any, foot_re: Any) -> Any:
-    """The end of every lane's step, whether it is good, the next one's length, and what it may have met.
+def begin(lane: Any, W: Any, sign: Any) -> None:
+    """The length of the step, up to a corner rather two even ones than a long one and a sliver; its first stage."""
+    t, h, limit = W[T + lane], W[H + lane], W[LIMIT + lane]
+    left, land = sign * (limit - t), W[LAND + lane]
+    step = sign * (left if h >= left else (0.5 * left if h > 0.5 * left else h))
+    step = step if land == 0.0 else land
+    W[STEP + lane] = step
+    W[TN + lane] = limit if (h >= left and land == 0.0) else t + step
+    W[TS + lane], W[RS + lane], W[PS + lane] = t, W[R + lane], W[PHI + lane]
 
-    Returns how many lanes call for scalar code.
-    """
-    prefer_widest_vectors()
-    calls = 0
-    for lane in range(LANES):
-        r, phi, t, h, step, tn = W[R + lane], W[PHI + lane], W[T + lane], W[H + lane], W[STEP + lane], W[TN + lane]
-        p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
-        k1 = W[K1 + lane]
-        rn, pn, error = solution(r, phi, step, k1, W[L1 + lane], stages_of(W, lane))
-        kn, ln, bm, bt, b_foot = motion_and_foot(tn, rn, pn, foot_re, p, C, D)
-        live = W[LIVE + lane] > 0.0
-        q = error * inverse_tolerance
-        ok = q <= 1.0 and live
-        q = q if q < HUGE else HUGE  # a NaN too
-        factor = SAFETY * rough_power(q + 1e-30, -0.125)
-        factor = factor if factor < GROW else GROW
-        factor = factor if factor > SHRINK else SHRINK
-        hn = abs(step) * factor
-        # a step cut short by a corner says little about the next one
-        clipped = h > 0.5 * (sign * (W[LIMIT + lane] - t))
-        hn = h if (ok and clipped and h > hn) else hn
-        hn = hn if hn < LONGEST else LONGEST
-        # Half the step at the larger speed bounds what the path strays from its ends; by far, where it does not turn.
-        stray = 0.5 * abs(step) * max(abs(k1), abs(kn)) * (1.0 if k1 * kn <= 0.0 else STRAIGHT)
-        crossing = (max(r, rn) + stray >= outer) or (min(r, rn) - stray <= inner)
-        was, rate = W[BM + lane], W[BT + lane]
-        rise = abs(step) * max(abs(rate), abs(bt)) * (1.0 if rate * bt <= 0.0 else STRAIGHT)
-        entering = max(was, bm) + rise >= NEAR_CONE * b_foot and W[WATCH + lane] > 0.0
-        flag = (CROSSING if crossing else 0.0) + (ENTERING if entering else 0.0)
-        flag = flag if ok else 0.0
-        stop = tn if ok else t - step
-        W[RN + lane], W[PN + lane], W[K13 + lane], W[L13 + lane] = rn, pn, kn, ln
-        W[BMN + lane], W[BTN + lane] = bm, bt
-        W[OK + lane], W[HN + lane] = (1.0 if ok else 0.0), hn
-        W[FLAG + lane], W[STOP + lane] = flag, stop
-        saving = sign * (stop - W[NEXT + lane]) >= 0.0
-        ending = ok and tn == W[LIMIT + lane]
-        failing = hn < SHORTEST or W[ACCEPTED + lane] + W[REJECTED + lane] > MOST_STEPS
-        calls += 1 if live and (saving or ending or failing or flag > 0.0) else 0
-    return calls
+
+@inlined
+def remember(lane: Any, W: Any) -> None:
+    """Keep the mirror field of the first stage."""
+    W[BM + lane], W[BT + lane] = W[BS + lane], W[BTS + lane]
+
+
+@inlined
+def judge(lane: Any, W: Any, rules: Any, inverse_tolerance: Any) -> None:
+    """The end of the step, whether it is good, the next one's length, and what scalar code is called for."""
+    sign, outer, inner, _, _, _ = rules
+    r, phi, t, h, step, tn = W[R + lane], W[PHI + lane], W[T + lane], W[H + lane], W[STEP + lane], W[TN + lane]
+    k1, k12 = W[K1 + lane], W[KS + lane]
+    W[K12 + lane], W[L12 + lane] = k12, W[LS + lane]
+    rn, pn, error = solution(r, phi, step, k1, W[L1 + lane], stages_of(W, lane))
+    live = W[LIVE + lane] > 0.0
+    q = error * inverse_tolerance
+    ok = q <= 1.0 and live
+    q = q if q < HUGE else HUGE  # a NaN too
+    factor = SAFETY * rough_power(q + 1e-30, -0.125)
+    factor = factor if factor < GROW else GROW
+    factor = factor if factor > SHRINK else SHRINK
+    hn = abs(step) * factor
+    # a step cut short by a corner says little about the next one
+    clipped = h > 0.5 * (sign * (W[LIMIT + lane] - t))
+    hn = h if (ok and clipped and h > hn) else hn
+    hn = hn if hn < LONGEST else LONGEST
+    # Half the step at the larger speed bounds what the path strays from its ends; by far, where it does not turn.
+    stray = 0.5 * abs(step) * max(abs(k1), abs(k12)) * (1.0 if k1 * k12 <= 0.0 else STRAIGHT)
+    land = W[LAND + lane] if ok else 0.0  # should such a short step fail, it is not aimed any more
+    landing = land != 0.0
+    crossing = ok and ((max(r, rn) + stray >= outer) or (min(r, rn) - stray <= inner))
+    stop = tn if ok else t - step
+    saving = live and sign * (stop - W[NEXT + lane]) >= 0.0
+    ending = ok and tn == W[LIMIT + lane]
+    failing = live and (hn < SHORTEST or W[ACCEPTED + lane] + W[REJECTED + lane] > MOST_STEPS)
+    W[RN + lane], W[PN + lane] = rn, pn
+    W[OK + lane], W[HN + lane], W[STOP + lane], W[LAND + lane] = (1.0 if ok else 0.0), hn, stop, land
+    W[CALL + lane] = (
+        (CROSSING if crossing else 0.0) + (SAVING if saving else 0.0)
+        + (SETTLING if ending or failing else 0.0) + (LANDING if landing else 0.0)
+    )  # fmt: skip
+
+
+@inlined
+def watch(lane: Any, W: Any, C: Any, foot_re: Any) -> None:
+    """Call for scalar code where the loss cone may have been entered within an accepted step."""
+    # The mirror field at the end is that of stage 12, whose place is near enough for an estimate.
+    rate, last = W[BT + lane], W[BTS + lane]
+    rise = abs(W[STEP + lane]) * max(abs(rate), abs(last)) * (1.0 if rate * last <= 0.0 else STRAIGHT)
+    s, c = sincos(W[PN + lane])
+    near = max(W[BM + lane], W[BS + lane]) + rise >= NEAR_CONE * foot(W[RN + lane], s, c, foot_re, C)
+    entering = near and W[WATCH + lane] > 0.0 and W[OK + lane] > 0.0
+    W[CALL + lane] = W[CALL + lane] + (ENTERING if entering else 0.0)
+
+
+@inlined
+def finish(lane: Any, W: Any) -> None:
+    """Time and place of stage 13: the end of the step."""
+    W[TS + lane], W[RS + lane], W[PS + lane] = W[TN + lane], W[RN + lane], W[PN + lane]
 
 
 @compiled
@@ -117,82 +140,59 @@ def interpolate_one(W: Any, lane: Any, C: Any) -> None:
     """The interpolant of one lane's step, by scalar code: worth it where few lanes need theirs."""
     f = interpolant(
         W[T + lane], W[R + lane], W[PHI + lane], W[STEP + lane], W[RN + lane], W[PN + lane], W[K1 + lane], W[L1 + lane],
-        W[K13 + lane], W[L13 + lane], stages_of(W, lane), particle(W, lane), C, drivers(W, D0 + lane, LANES),
+        stages_of(W, lane), particle(W, lane), C, drivers(W, D0 + lane, LANES),
     )  # fmt: skip
     for i in range(16):
         W[F0 + i * LANES + lane] = f[i]
 
 
 @inlined
-def interpolate_all(W: Any, C: Any) -> None:
-    """The interpolant of every lane's step, once stages 14 to 16 are there."""
-    prefer_widest_vectors()
-    for lane in range(LANES):
-        f = coefficients(
-            W[R + lane], W[PHI + lane], W[STEP + lane], W[RN + lane], W[PN + lane], W[K1 + lane], W[L1 + lane],
-            W[K13 + lane], W[L13 + lane], stages_of(W, lane), late_stages_of(W, lane),
-        )  # fmt: skip
-        W[F0 + lane] = f[0]
-        W[F1 + lane] = f[1]
-        W[F2 + lane] = f[2]
-        W[F3 + lane] = f[3]
-        W[F4 + lane] = f[4]
-        W[F5 + lane] = f[5]
-        W[F6 + lane] = f[6]
-        W[F7 + lane] = f[7]
-        W[F8 + lane] = f[8]
-        W[F9 + lane] = f[9]
-        W[F10 + lane] = f[10]
-        W[F11 + lane] = f[11]
-        W[F12 + lane] = f[12]
-        W[F13 + lane] = f[13]
-        W[F14 + lane] = f[14]
-        W[F15 + lane] = f[15]
+def interpolate(lane: Any, W: Any) -> None:
+    """The interpolant of the step, once stages 13 to 16 are there."""
+    f = coefficients(
+        W[R + lane], W[PHI + lane], W[STEP + lane], W[RN + lane], W[PN + lane], W[K1 + lane], W[L1 + lane],
+        W[K13 + lane], W[L13 + lane], stages_of(W, lane), late_stages_of(W, lane),
+    )  # fmt: skip
+    W[F0 + lane], W[F1 + lane], W[F2 + lane], W[F3 + lane] = f[0], f[1], f[2], f[3]
+    W[F4 + lane], W[F5 + lane], W[F6 + lane], W[F7 + lane] = f[4], f[5], f[6], f[7]
+    W[F8 + lane], W[F9 + lane], W[F10 + lane], W[F11 + lane] = f[8], f[9], f[10], f[11]
+    W[F12 + lane], W[F13 + lane], W[F14 + lane], W[F15 + lane] = f[12], f[13], f[14], f[15]
 
 
 @inlined
-def point_all(W: Any) -> None:
-    """Every lane's point at its next time to save; where that is the step's end, the end itself."""
-    prefer_widest_vectors()
-    for lane in range(LANES):
-        x = (W[NEXT + lane] - W[T + lane]) / W[STEP + lane]
-        ending = W[NEXT + lane] == W[TN + lane]
-        r = along(
-            W[F0 + lane], W[F1 + lane], W[F2 + lane], W[F3 + lane],
-            W[F4 + lane], W[F5 + lane], W[F6 + lane], W[F7 + lane], x,
-        )  # fmt: skip
-        phi = along(
-            W[F8 + lane], W[F9 + lane], W[F10 + lane], W[F11 + lane],
-            W[F12 + lane], W[F13 + lane], W[F14 + lane], W[F15 + lane], x,
-        )  # fmt: skip
-        W[SR + lane] = W[RN + lane] if ending else r
-        W[SP + lane] = W[PN + lane] if ending else phi
+def point(lane: Any, W: Any) -> None:
+    """The point at the next time to save; where that is the step's end, the end itself."""
+    x = (W[NEXT + lane] - W[T + lane]) / W[STEP + lane]
+    ending = W[NEXT + lane] == W[TN + lane]
+    r = along(
+        W[F0 + lane], W[F1 + lane], W[F2 + lane], W[F3 + lane],
+        W[F4 + lane], W[F5 + lane], W[F6 + lane], W[F7 + lane], x,
+    )  # fmt: skip
+    phi = along(
+        W[F8 + lane], W[F9 + lane], W[F10 + lane], W[F11 + lane],
+        W[F12 + lane], W[F13 + lane], W[F14 + lane], W[F15 + lane], x,
+    )  # fmt: skip
+    W[SR + lane] = W[RN + lane] if ending else r
+    W[SP + lane] = W[PN + lane] if ending else phi
 
 
 @inlined
-def accept_all(W: Any) -> None:
-    """Move every lane whose step was accepted; keep the angle within half a turn."""
-    prefer_widest_vectors()
-    for lane in range(LANES):
-        ok = W[OK + lane] > 0.0
-        phi = W[PN + lane] if ok else W[PHI + lane]
-        turn = 1.0 if phi > np.pi else (-1.0 if phi < -np.pi else 0.0)
-        W[PHI + lane] = phi - TWO_PI * turn
-        W[TURNS + lane] = W[TURNS + lane] + turn
-        W[R + lane] = W[RN + lane] if ok else W[R + lane]
-        W[T + lane] = W[TN + lane] if ok else W[T + lane]
-        W[K1 + lane] = W[K13 + lane] if ok else W[K1 + lane]
-        W[L1 + lane] = W[L13 + lane] if ok else W[L1 + lane]
-        W[BM + lane] = W[BMN + lane] if ok else W[BM + lane]
-        W[BT + lane] = W[BTN + lane] if ok else W[BT + lane]
-        W[H + lane] = W[HN + lane]
-        W[ACCEPTED + lane] = W[ACCEPTED + lane] + W[OK + lane]
-        W[REJECTED + lane] = W[REJECTED + lane] + (W[LIVE + lane] - W[OK + lane])
+def accept(lane: Any, W: Any) -> None:
+    """Move on, if the step was accepted; keep the angle within half a turn."""
+    good, live = W[OK + lane], W[LIVE + lane]
+    t, r, phi, tn, rn, pn = W[T + lane], W[R + lane], W[PHI + lane], W[TN + lane], W[RN + lane], W[PN + lane]
+    ok = good > 0.0
+    phi = pn if ok else phi
+    turn = 1.0 if phi > np.pi else (-1.0 if phi < -np.pi else 0.0)
+    W[T + lane], W[R + lane], W[PHI + lane] = (tn if ok else t), (rn if ok else r), phi - TWO_PI * turn
+    W[TURNS + lane] = W[TURNS + lane] + turn
+    W[H + lane] = W[HN + lane]
+    W[ACCEPTED + lane] = W[ACCEPTED + lane] + good
+    W[REJECTED + lane] = W[REJECTED + lane] + (live - good)
 
 
 @inlined
-def observe_row(r: Any, phi: Any, energy: Any, pitch: Any, p: Any, C: Any) -> None:
-    """Turn one particle's saved (r, phi) into r, local time, energy and pitch angle, in place; NaN stays NaN."""
-    prefer_widest_vectors()
-    for j in range(r.size):
-        phi[j], energy[j], pitch[j] = observed(r[j], phi[j], p, C)
+def observe(j: Any, r: Any, phi: Any, energy: Any, pitch: Any, p: Any, C: Any) -> None:
+    """Turn the saved (r, phi) of one particle's time `j` into r, local time, energy and pitch angle, in place; NaN
+    stays NaN."""
+    phi[j], energy[j], pitch[j] = observed(r[j], phi[j], p, C)

@@ -12,11 +12,13 @@ from .advance import (
     BAD_STEPS, CAUSE, CONE_OFF, CONE_STOP, CONE_TIME, DRIFTING, END_ENERGY, END_MLT, END_PITCH, END_R, FAILED,
     GOOD_STEPS, TIME, TURNED, segment_at,
 )  # fmt: skip
-from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, polished
-from .drift import depth_in_cone, motion_at, observed
+from .crossing import CONE, INNER, NEVER, OUTER, excess, first_crossing, initial_step
+from .drift import depth_in_cone, observed, slope_at
 from .field import drivers
 from .lanes import GROW, LONGEST, MOST_STEPS, SAFETY, SHORTEST, SHRINK
-from .step import along, interpolant, trial
+from .step import along, interpolant, trial, trial_at
+
+POLISHINGS = 3
 
 
 @compiled
@@ -36,11 +38,38 @@ def path(F: Any, x: Any) -> Any:
 
 
 @compiled
+def polished(
+    which: Any, x: Any, t: Any, r: Any, phi: Any, h: Any, k1: Any, l1: Any,
+    outer: Any, inner: Any, foot_re: Any, p: Any, C: Any, D: Any,
+) -> Any:  # fmt: skip
+    """Step length, r and phi at the crossing near fraction `x`: as accurate as the path itself.
+
+    Newton's method on true steps, from the interpolant's point; a last shift of less than 1e-6 of the step is taken
+    to first order.
+    """
+    step = x * h
+    for _ in range(POLISHINGS):
+        re, pe = trial_at(t, r, phi, step, k1, l1, p, C, D)
+        ke, le = slope_at(t + step, re, pe, p, C, D)
+        small = 1e-5 * h
+        g = excess(which, re, pe, outer, inner, foot_re, p, C)
+        rate = (excess(which, re + ke * small, pe + le * small, outer, inner, foot_re, p, C) - g) / small
+        shift = -g / rate
+        if not abs(shift) < 1e-2 * abs(h):  # a touch: the rate vanishes, the interpolant's point stands
+            return step, re, pe
+        if abs(shift) < 1e-6 * abs(h):
+            return step + shift, re + ke * shift, pe + le * shift
+        step = step + shift
+    re, pe = trial_at(t, r, phi, step, k1, l1, p, C, D)
+    return step, re, pe
+
+
+@compiled
 def meeting(
     F: Any, t: Any, r: Any, phi: Any, step: Any, k1: Any, l1: Any, watching: Any, rules: Any, p: Any, C: Any, D: Any
 ) -> Any:
     """What the step met first: cause or DRIFTING, its time, place, and when the cone was entered (NaN if not)."""
-    _, _, outer, inner, foot_re, cone, _ = rules
+    _, outer, inner, foot_re, cone, _ = rules
     x, which, cone_t = NEVER, DRIFTING, np.nan
     for candidate in (OUTER, INNER):
         found = first_crossing(candidate, F, outer, inner, foot_re, p, C)
@@ -61,13 +90,13 @@ def meeting(
 @compiled
 def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any, i: Any) -> None:
     """Integrate particle `i`."""
-    t_end, sign, outer, inner, foot_re, cone, tolerance = rules
-    r, phi, t = P[i, 0], P[i, 1], P[i, 2]
+    sign, outer, inner, foot_re, cone, tolerance = rules
+    r, phi, t, t_end = P[i, 0], P[i, 1], P[i, 2], P[i, 7]
     p = (P[i, 3], P[i, 4], P[i, 5], P[i, 6])
     turns, cause, accepted, rejected = 0.0, DRIFTING, 0, 0
     seg = segment_at(edges, t, sign)
     D = drivers(segments[seg], 0, 1)
-    k1, l1, _, _ = motion_at(t, r, phi, p, C, D)
+    k1, l1 = slope_at(t, r, phi, p, C, D)
     j = np.searchsorted(sign * times, sign * t)
     if j < times.size and times[j] == t:
         write(track, i, j, r, phi, p, C)
@@ -97,8 +126,7 @@ def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, en
             continue
         accepted += 1
         h = min(max(h, abs(step) * factor) if clipped else abs(step) * factor, LONGEST)
-        kn, ln, _, _ = motion_at(tn, rn, pn, p, C, D)
-        F = interpolant(t, r, phi, step, rn, pn, k1, l1, kn, ln, stages, p, C, D)
+        F = interpolant(t, r, phi, step, rn, pn, k1, l1, stages, p, C, D)
         watching = cone != CONE_OFF and np.isnan(end[i, CONE_TIME])
         cause, stop, re, pe, cone_t = meeting(F, t, r, phi, step, k1, l1, watching, rules, p, C, D)
         if watching:
@@ -111,13 +139,13 @@ def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, en
                 rs, ps = rn, pn
             write(track, i, j, rs, ps, p, C)
             j += 1
-        t, r, phi, k1, l1 = tn, rn, pn, kn, ln
+        t, r, phi = tn, rn, pn
         turn = 1.0 if phi > np.pi else (-1.0 if phi < -np.pi else 0.0)
         phi, turns = phi - TWO_PI * turn, turns + turn
         if t == limit and t != t_end and cause == DRIFTING:
             seg += 1 if sign > 0.0 else -1
             D = drivers(segments[seg], 0, 1)
-            k1, l1, _, _ = motion_at(t, r, phi, p, C, D)
+        k1, l1 = slope_at(t, r, phi, p, C, D)
         if accepted + rejected > MOST_STEPS:
             cause = FAILED
     end[i, TIME], end[i, END_R], end[i, CAUSE] = t, r, cause

@@ -173,11 +173,11 @@ def coefficients(
 
 @inlined
 def interpolant(
-    t: Any, r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, k13: Any, l13: Any, stages: Any,
-    p: Any, C: Any, D: Any,
+    t: Any, r: Any, phi: Any, h: Any, rn: Any, pn: Any, k1: Any, l1: Any, stages: Any, p: Any, C: Any, D: Any
 ) -> Any:
     """The coefficients, with the stages that only they need."""
     k6, k7, k8, k9, k10, k11, k12, l6, l7, l8, l9, l10, l11, l12 = stages
+    k13, l13 = slope(t + h, rn, pn, p, C, D)
     k14, l14 = slope(
         t + tb.C14 * h, r + h * (tb.A14_1 * k1 + tb.A14_7 * k7 + tb.A14_8 * k8 + tb.A14_9 * k9 + tb.A14_10 * k10 +
         tb.A14_11 * k11 + tb.A14_12 * k12 + tb.A14_13 * k13),
