@@ -204,7 +204,8 @@ def target() -> tuple[str, str]:
     from llvmlite.binding import get_host_cpu_features, get_host_cpu_name
 
     name = os.environ.get("NUMBA_CPU_NAME") or get_host_cpu_name()
-    return name, os.environ.get("NUMBA_CPU_FEATURES") or get_host_cpu_features().flatten()
+    features = os.environ.get("NUMBA_CPU_FEATURES")  # an empty one means none beyond the name's own
+    return name, get_host_cpu_features().flatten() if features is None else features
 
 
 def kernel_name(text: str, files: tuple[str, ...]) -> str:

@@ -10,15 +10,15 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import TWO_PI, compiled, entry_point, over_lanes
+from tracer.kernels.arith import TWO_PI, compiled, entry_point, over_lanes, stand_apart
 from tracer.status import Cause
 
 from .crossing import CONE, INNER, NEVER, OUTER, first_crossing, initial_step, shift_to, straight_crossing
 from .drift import depth_in_cone, observed, slope_at
 from .field import drivers
 from .lanes import (
-    CROSSING, ENTERING, LANDING, MOST_STEPS, SAVING, SHORTEST, accept, begin, finish, interpolate, interpolate_one,
-    judge, observe, particle, point, remember, slopes, watch,
+    ENTERING, LANDING, MOST_STEPS, NEARING, PASSING, SAVING, SHORTEST, accept, begin, finish, interpolate, judge,
+    observe, particle, point, remember, slopes, watch,
 )  # fmt: skip
 from .layout import (
     R, PHI, T, H, TURNS, MU, K, Q, M, LIVE, ACCEPTED, REJECTED, UNTIL, LIMIT, NEXT, WATCH, STEP, TN, RN, PN, OK, HN,
@@ -35,16 +35,22 @@ EVER = 1e300  # a time that no run reaches
 SIDE_BY_SIDE = 4  # registers of lanes that the processor works on at once: fewer leave it waiting
 # columns of `end`
 TIME, END_R, END_MLT, END_ENERGY, END_PITCH, CAUSE, TURNED, CONE_TIME, GOOD_STEPS, BAD_STEPS = range(10)
-# rows of the bookkeeping `S`: particle, driver segment, next saved time, cause, the limit aimed at, shots at it so far
-OWNER, SEGMENT, FOLLOWING, FATE, AIM, SHOTS = range(6)
+# rows of the bookkeeping `S`: particle, driver segment, first and next saved time, cause, limit aimed at, shots so far
+OWNER, SEGMENT, BEGUN, FOLLOWING, FATE, AIM, SHOTS = range(7)
 MOST_SHOTS = 6
 
 
 @compiled
 def segment_at(edges: Any, t: Any, sign: Any) -> Any:
     """Index of the driver segment that is entered at `t`."""
-    i = np.searchsorted(edges, t, side="right") - 1 if sign > 0 else np.searchsorted(edges, t) - 1
-    return min(max(i, 0), edges.size - 2)
+    low, high = 0, edges.size - 1  # by halves: numpy's own search takes a second to compile
+    while high - low > 1:
+        middle = (low + high) // 2
+        if edges[middle] < t or (edges[middle] == t and sign > 0.0):
+            low = middle
+        else:
+            high = middle
+    return low
 
 
 @compiled
@@ -60,9 +66,10 @@ def enter_segment(W: Any, S: Any, lane: Any, seg: Any, edges: Any, segments: Any
 @compiled
 def release(
     W: Any, S: Any, lane: Any, i: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any,
-    track: Any,
+    saved: Any,
 ) -> None:  # fmt: skip
     """Put particle `i` into `lane`; its fate is other than DRIFTING when it ends at once."""
+    stand_apart()
     sign, outer, inner, foot_re, cone, tolerance = rules
     r, phi, t = P[i, 0], P[i, 1], P[i, 2]
     W[R + lane], W[PHI + lane], W[T + lane] = r, phi, t
@@ -74,8 +81,9 @@ def release(
     k1, l1 = slope_at(t, r, phi, particle(W, lane), C, drivers(W, D0 + lane, LANES))
     W[H + lane] = initial_step(k1, l1, tolerance)
     j = first_saved(times, t, sign)
+    S[BEGUN, lane] = j
     if j < times.size and times[j] == t:
-        track[i, 0, j], track[i, 1, j] = r, phi
+        saved[lane, 0, j], saved[lane, 1, j] = r, phi
         j += 1
     S[FOLLOWING, lane] = j
     W[NEXT + lane] = times[j] if j < times.size else sign * EVER
@@ -94,29 +102,31 @@ def release(
 @compiled
 def first_saved(times: Any, t: Any, sign: Any) -> Any:
     """Index of the first saved time at or after `t` in the order of tracing."""
-    if sign > 0.0:
-        return np.searchsorted(times, t)
-    return times.size - np.searchsorted(times[::-1], t, side="right")
+    low, high = 0, times.size
+    while low < high:
+        middle = (low + high) // 2
+        if sign * (times[middle] - t) < 0.0:
+            low = middle + 1
+        else:
+            high = middle
+    return low
 
 
 @compiled
-def sight(W: Any, lane: Any, C: Any, rules: Any, interpolated: Any) -> Any:
+def sight(W: Any, lane: Any, C: Any, rules: Any) -> Any:
     """What the particle in `lane` meets first within its accepted step, and at which fraction of it: `NEVER` if
     nothing."""
+    stand_apart()
     _, outer, inner, foot_re, _, _ = rules
     call = int(W[CALL + lane])
-    r, rn, k1, k12 = W[R + lane], W[RN + lane], W[K1 + lane], W[K12 + lane]
-    if call & int(ENTERING) == 0 and k1 * k12 > 0.0:
-        if r < outer <= rn:
-            return straight_crossing(r, rn, W[STEP + lane], k1, k12, outer), OUTER
-        if r > inner >= rn:
-            return straight_crossing(r, rn, W[STEP + lane], k1, k12, inner), INNER
-    if not interpolated:
-        interpolate_one(W, lane, C)
     F = W[F0 + lane : F15 + lane + 1 : LANES]
     p = particle(W, lane)
     x, which = NEVER, DRIFTING
-    if call & int(CROSSING):
+    if call & int(PASSING):
+        which = OUTER if W[RN + lane] >= outer else INNER
+        limit = outer if which == OUTER else inner
+        x = straight_crossing(W[R + lane], W[RN + lane], W[STEP + lane], W[K1 + lane], W[K12 + lane], limit)
+    if call & int(NEARING):
         x, which = first_crossing(OUTER, F, outer, inner, foot_re, p, C), OUTER
         other = first_crossing(INNER, F, outer, inner, foot_re, p, C)
         if other < x:
@@ -143,6 +153,7 @@ def land(W: Any, S: Any, lane: Any, C: Any, rules: Any, end: Any) -> None:
     A last shift of less than 1e-6 of the step is taken to first order. At a touch the rate vanishes, and the place
     found on the interpolant stands.
     """
+    stand_apart()
     _, outer, inner, foot_re, cone, _ = rules
     which, step = S[AIM, lane], W[STEP + lane]
     t, r, phi = W[TN + lane], W[RN + lane], W[PN + lane]
@@ -166,27 +177,55 @@ def land(W: Any, S: Any, lane: Any, C: Any, rules: Any, end: Any) -> None:
 
 
 @compiled
-def conclude(W: Any, S: Any, lane: Any, P: Any, C: Any, end: Any) -> None:
+def observe_all(
+    r: Any, phi: Any, distance: Any, mlt: Any, energy: Any, pitch: Any, p: Any, C: Any
+) -> None:  # fmt: skip
+    """Put one particle's saved places into its track, as what a file holds."""
+    stand_apart()
+    over_lanes(observe, r.size, 2, (r, phi, distance, mlt, energy, pitch, p, C))
+
+
+@compiled
+def conclude(W: Any, S: Any, lane: Any, P: Any, C: Any, end: Any, saved: Any, track: Any) -> None:
     """Write the end of the particle in `lane` and let the lane rest: whatever it computes then is never accepted."""
+    stand_apart()
     i, r, phi = S[OWNER, lane], W[R + lane], W[PHI + lane]
     end[i, TIME], end[i, END_R], end[i, CAUSE] = W[T + lane], r, S[FATE, lane]
     end[i, END_MLT], end[i, END_ENERGY], end[i, END_PITCH] = observed(r, phi, particle(W, lane), C)
     end[i, TURNED] = W[TURNS + lane] + (phi - P[i, 1]) / TWO_PI
     end[i, GOOD_STEPS], end[i, BAD_STEPS] = W[ACCEPTED + lane], W[REJECTED + lane]
     S[OWNER, lane], W[LIVE + lane] = -1, 0.0
+    first, stop = S[BEGUN, lane], S[FOLLOWING, lane]
+    if stop > first:
+        observe_all(
+            saved[lane, 0, first:stop], saved[lane, 1, first:stop], track[i, 0, first:stop], track[i, 1, first:stop],
+            track[i, 2, first:stop], track[i, 3, first:stop], particle(W, lane), C,
+        )  # fmt: skip
 
 
 @compiled
 def refill(
-    W: Any, S: Any, taken: Any, P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, end: Any, track: Any
+    W: Any,
+    S: Any,
+    taken: Any,
+    P: Any,
+    C: Any,
+    edges: Any,
+    segments: Any,
+    rules: Any,
+    times: Any,
+    end: Any,
+    saved: Any,
+    track: Any,
 ) -> Any:
     """Give every idle lane the next particle that does not end at its release; returns how many were taken in all."""
+    stand_apart()
     for lane in range(LANES):
         while S[OWNER, lane] < 0 and taken < P.shape[0]:
-            release(W, S, lane, taken, P, C, edges, segments, rules, times, end, track)
+            release(W, S, lane, taken, P, C, edges, segments, rules, times, end, saved)
             taken += 1
             if S[FATE, lane] != DRIFTING or W[T + lane] == W[UNTIL + lane]:
-                conclude(W, S, lane, P, C, end)
+                conclude(W, S, lane, P, C, end, saved, track)
     return taken
 
 
@@ -203,27 +242,29 @@ def callers(W: Any, who: Any) -> Any:
 
 
 @compiled
-def meet_all(W: Any, S: Any, who: Any, C: Any, rules: Any, interpolated: Any, end: Any) -> None:
+def meet_all(W: Any, S: Any, who: Any, C: Any, rules: Any, end: Any) -> None:
     """Before the step is taken: did it end where a limit is, or does it lead over one?"""
+    stand_apart()
     for lane in who:
         call = int(W[CALL + lane])
         if call & int(LANDING):
             land(W, S, lane, C, rules, end)
-        elif call & int(CROSSING + ENTERING):
-            x, which = sight(W, lane, C, rules, interpolated)
+        elif call & int(PASSING + NEARING + ENTERING):
+            x, which = sight(W, lane, C, rules)
             if x < NEVER:
                 S[AIM, lane], S[SHOTS, lane] = which, 0
                 retake(W, lane, x * W[STEP + lane])
 
 
 @compiled
-def save_next(W: Any, S: Any, who: Any, sign: Any, times: Any, track: Any) -> Any:
+def save_next(W: Any, S: Any, who: Any, sign: Any, times: Any, saved: Any) -> Any:
     """Save the points at the lanes' next times that their steps have passed; returns whether a step passed more."""
+    stand_apart()
     more = False
     for lane in who:
         if sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0:
-            i, j = S[OWNER, lane], S[FOLLOWING, lane]
-            track[i, 0, j], track[i, 1, j] = W[SR + lane], W[SP + lane]
+            j = S[FOLLOWING, lane]
+            saved[lane, 0, j], saved[lane, 1, j] = W[SR + lane], W[SP + lane]
             S[FOLLOWING, lane] = j + 1
             W[NEXT + lane] = times[j + 1] if j + 1 < times.size else sign * EVER
             more = more or sign * (W[STOP + lane] - W[NEXT + lane]) >= 0.0
@@ -231,9 +272,12 @@ def save_next(W: Any, S: Any, who: Any, sign: Any, times: Any, track: Any) -> An
 
 
 @compiled
-def settle_all(W: Any, S: Any, who: Any, P: Any, C: Any, edges: Any, segments: Any, sign: Any, end: Any) -> Any:
+def settle_all(
+    W: Any, S: Any, who: Any, P: Any, C: Any, edges: Any, segments: Any, sign: Any, end: Any, saved: Any, track: Any,
+) -> Any:  # fmt: skip
     """After the step: end what has ended, and take the others over the corners; returns whether a lane became
     idle."""
+    stand_apart()
     idle = False
     for lane in who:
         t = W[T + lane]
@@ -242,7 +286,7 @@ def settle_all(W: Any, S: Any, who: Any, P: Any, C: Any, edges: Any, segments: A
         ):
             S[FATE, lane] = FAILED
         if S[FATE, lane] != DRIFTING or t == W[UNTIL + lane]:
-            conclude(W, S, lane, P, C, end)
+            conclude(W, S, lane, P, C, end, saved, track)
             idle = True
         elif t == W[LIMIT + lane]:
             enter_segment(W, S, lane, S[SEGMENT, lane] + (1 if sign > 0.0 else -1), edges, segments, sign)
@@ -252,7 +296,17 @@ def settle_all(W: Any, S: Any, who: Any, P: Any, C: Any, edges: Any, segments: A
 @compiled
 def slopes_all(W: Any, C: Any) -> None:
     """The slopes of the present stage in all lanes: one piece of machine code, for it is long and called often."""
+    stand_apart()
     over_lanes(slopes, LANES, SIDE_BY_SIDE, (W, C))
+
+
+@compiled
+def occupied(S: Any) -> Any:
+    """Whether a particle rides in any lane."""
+    for lane in range(LANES):  # noqa: SIM110 - numba has no any()
+        if S[OWNER, lane] >= 0:
+            return True
+    return False
 
 
 @compiled
@@ -285,13 +339,13 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
         Takes r, mlt, energy, pitch; filled with NaN before.
     """
     sign, _, _, foot_re, cone, tolerance = rules
-    W, S, who = aligned(SIZE), np.zeros((6, LANES), np.int64), np.zeros(LANES, np.int64)
-    W[R : R + LANES], W[Q : Q + LANES], W[H : H + LANES] = 5.0, 1.0, 1.0  # a place where a lane may rest
-    W[LIMIT : LIMIT + LANES] = sign * EVER
-    S[OWNER] = -1
-    taken = refill(W, S, 0, P, C, edges, segments, rules, times, end, track)
-    busy = np.max(S[OWNER]) >= 0
-    while busy:
+    W, S, who = aligned(SIZE), np.zeros((7, LANES), np.int64), np.zeros(LANES, np.int64)
+    for lane in range(LANES):
+        W[R + lane], W[Q + lane], W[H + lane], W[LIMIT + lane] = 5.0, 1.0, 1.0, sign * EVER  # where a lane may rest
+        S[OWNER, lane] = -1
+    saved = np.empty((LANES, 2, times.size))  # places of those under way: written here and there, so near the processor
+    taken = refill(W, S, 0, P, C, edges, segments, rules, times, end, saved, track)
+    while occupied(S):
         over_lanes(begin, LANES, 1, (W, sign))
         slopes_all(W, C)
         over_lanes(remember, LANES, 1, (W,))
@@ -321,7 +375,7 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
         if cone != CONE_OFF:
             over_lanes(watch, LANES, 2, (W, C, foot_re))
         n, calls = callers(W, who)
-        if calls & int(SAVING):
+        if calls & int(NEARING + ENTERING + SAVING):
             over_lanes(finish, LANES, 1, (W,))
             slopes_all(W, C)
             over_lanes(stage_14, LANES, 2, (W,))
@@ -331,17 +385,12 @@ def advance(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, e
             over_lanes(stage_16, LANES, 2, (W,))
             slopes_all(W, C)
             over_lanes(interpolate, LANES, 2, (W,))
-        if calls & int(CROSSING + ENTERING + LANDING):
-            meet_all(W, S, who[:n], C, rules, calls & int(SAVING), end)
+        if calls & int(PASSING + NEARING + ENTERING + LANDING):
+            meet_all(W, S, who[:n], C, rules, end)
         more = (calls & int(SAVING)) > 0
         while more:
             over_lanes(point, LANES, 2, (W,))
-            more = save_next(W, S, who[:n], sign, times, track)
+            more = save_next(W, S, who[:n], sign, times, saved)
         over_lanes(accept, LANES, 1, (W,))
-        if n > 0 and settle_all(W, S, who[:n], P, C, edges, segments, sign, end):
-            taken = refill(W, S, taken, P, C, edges, segments, rules, times, end, track)
-            busy = np.max(S[OWNER]) >= 0
-    if times.size > 0:
-        for i in range(P.shape[0]):
-            r, phi, energy, pitch = track[i, 0], track[i, 1], track[i, 2], track[i, 3]
-            over_lanes(observe, times.size, 2, (r, phi, energy, pitch, (P[i, 3], P[i, 4], P[i, 5], P[i, 6]), C))
+        if n > 0 and settle_all(W, S, who[:n], P, C, edges, segments, sign, end, saved, track):
+            taken = refill(W, S, taken, P, C, edges, segments, rules, times, end, saved, track)

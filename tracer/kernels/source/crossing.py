@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import compiled
+from tracer.kernels.arith import compiled, stand_apart
 from tracer.status import Cause
 
 from .drift import depth_in_cone, slope_at
@@ -37,6 +37,7 @@ def excess(which: Any, r: Any, phi: Any, outer: Any, inner: Any, foot_re: Any, p
 @compiled
 def excess_along(which: Any, F: Any, x: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """`excess` at fraction `x` of the step whose interpolant is `F`."""
+    stand_apart()
     r = along(F[0], F[1], F[2], F[3], F[4], F[5], F[6], F[7], x)
     if which == OUTER:
         return r - outer
@@ -49,6 +50,7 @@ def excess_along(which: Any, F: Any, x: Any, outer: Any, inner: Any, foot_re: An
 @compiled
 def highest(which: Any, F: Any, a: Any, b: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any) -> Any:
     """Fraction between `a` and `b` where the excess is largest, by golden sections."""
+    stand_apart()
     x, y = b - GOLDEN * (b - a), a + GOLDEN * (b - a)
     gx = excess_along(which, F, x, outer, inner, foot_re, p, C)
     gy = excess_along(which, F, y, outer, inner, foot_re, p, C)
@@ -72,6 +74,7 @@ def root(
 
     The Illinois method (Dowell & Jarratt 1971), down to what a step on the true path is started from.
     """
+    stand_apart()
     for _ in range(SECANTS):
         x = b - gb * (b - a) / (gb - ga)
         g = excess_along(which, F, x, outer, inner, foot_re, p, C)
@@ -93,6 +96,7 @@ def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: 
     neighbours it rises by less than half of what they differ; only if that could reach the limit is the summit
     searched for. Before the second sample and after the last but one it has a summit if it turns there.
     """
+    stand_apart()
     before = ga = excess_along(which, F, 0.0, outer, inner, foot_re, p, C)
     rising = excess_along(which, F, SLIGHT, outer, inner, foot_re, p, C) > ga
     width = 1.0 / SAMPLES
@@ -121,6 +125,7 @@ def shift_to(
     which: Any, t: Any, r: Any, phi: Any, h: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any, D: Any
 ) -> Any:  # fmt: skip
     """Newton's step in time from the end of a step of length `h` to the limit, and the slopes there."""
+    stand_apart()
     by_r, by_phi = slope_at(t, r, phi, p, C, D)
     small = 1e-5 * h
     g = excess(which, r, phi, outer, inner, foot_re, p, C)
@@ -132,6 +137,7 @@ def shift_to(
 def straight_crossing(r: Any, rn: Any, h: Any, k: Any, kn: Any, limit: Any) -> Any:
     """Fraction of a step at which a path that only rises, or only falls, passes `limit`: from the cubic through its
     ends, a place to aim at."""
+    stand_apart()
     a, b, ga, gb = 0.0, 1.0, r - limit, rn - limit
     x = b
     for _ in range(SECANTS):

@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 
 from fields.constants import KV_PER_NT_RE2_TO_PER_H
-from tracer.kernels.arith import arc_tangent, compiled, inlined, inverse_root, sincos
+from tracer.kernels.arith import arc_tangent, compiled, inlined, inverse_root, sincos, stand_apart
 
 from .field import drift_factor, foot, mirror, potential
 
@@ -45,12 +45,14 @@ def slope(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
 @compiled
 def slope_at(t: Any, r: Any, phi: Any, p: Any, C: Any, D: Any) -> Any:
     """`slope`, for scalar code."""
+    stand_apart()
     return slope(t, r, phi, p, C, D)
 
 
 @compiled
 def depth_in_cone(r: Any, phi: Any, p: Any, foot_re: Any, C: Any) -> Any:
     """B_m / B_foot - 1: positive inside the loss cone."""
+    stand_apart()
     s, c = sincos(phi)
     return mirror(p[1], r, s, c, C)[0] / foot(r, s, c, foot_re, C) - 1.0
 

@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from tracer.kernels.arith import TWO_PI, compiled, inlined, rough_power, sincos
+from tracer.kernels.arith import TWO_PI, inlined, rough_power, sincos
 
 from .drift import motion, observed
 from .field import drivers, foot
@@ -20,7 +20,7 @@ from .layout import (
     L9, L10, L11, L12, L13, L14, L15, F0, F1, F2, F3, F4, F5, F6, F7, F8, F9, F10, F11, F12, F13, F14, F15, SR, SP,
     D0, LANES,
 )  # fmt: skip
-from .step import along, coefficients, interpolant, solution
+from .step import along, coefficients, solution
 
 # So small a safety factor rejects few steps; measured, it costs a quarter less than 0.9 at equal error.
 SAFETY, SHRINK, GROW = 0.65, 0.2, 4.0
@@ -29,7 +29,9 @@ LONGEST, SHORTEST = 1e3, 1e-13  # steps, hours
 MOST_STEPS = 2e7
 STRAIGHT = 0.1  # of that bound, where the speed keeps its sign
 NEAR_CONE = 0.8  # of the foot field: leaves room for how that changes within a step
-CROSSING, ENTERING, SAVING, SETTLING, LANDING = 1.0, 2.0, 4.0, 8.0, 16.0  # bits of CALL
+# Bits of CALL: straight over a boundary; perhaps over one; perhaps into the loss cone; past a time to save; at an end
+# or a corner; on a limit that was aimed at.
+PASSING, NEARING, ENTERING, SAVING, SETTLING, LANDING = 1.0, 2.0, 4.0, 8.0, 16.0, 32.0
 
 
 @inlined
@@ -104,7 +106,9 @@ def judge(lane: Any, W: Any, rules: Any, inverse_tolerance: Any) -> None:
     stray = 0.5 * abs(step) * max(abs(k1), abs(k12)) * (1.0 if k1 * k12 <= 0.0 else STRAIGHT)
     land = W[LAND + lane] if ok else 0.0  # should such a short step fail, it is not aimed any more
     landing = land != 0.0
-    crossing = ok and ((max(r, rn) + stray >= outer) or (min(r, rn) - stray <= inner))
+    near = ok and ((max(r, rn) + stray >= outer) or (min(r, rn) - stray <= inner))
+    passing = near and k1 * k12 > 0.0 and (r < outer <= rn or r > inner >= rn)
+    nearing = near and not passing
     stop = tn if ok else t - step
     saving = live and sign * (stop - W[NEXT + lane]) >= 0.0
     ending = ok and tn == W[LIMIT + lane]
@@ -112,7 +116,7 @@ def judge(lane: Any, W: Any, rules: Any, inverse_tolerance: Any) -> None:
     W[RN + lane], W[PN + lane] = rn, pn
     W[OK + lane], W[HN + lane], W[STOP + lane], W[LAND + lane] = (1.0 if ok else 0.0), hn, stop, land
     W[CALL + lane] = (
-        (CROSSING if crossing else 0.0) + (SAVING if saving else 0.0)
+        (PASSING if passing else 0.0) + (NEARING if nearing else 0.0) + (SAVING if saving else 0.0)
         + (SETTLING if ending or failing else 0.0) + (LANDING if landing else 0.0)
     )  # fmt: skip
 
@@ -133,17 +137,6 @@ def watch(lane: Any, W: Any, C: Any, foot_re: Any) -> None:
 def finish(lane: Any, W: Any) -> None:
     """Time and place of stage 13: the end of the step."""
     W[TS + lane], W[RS + lane], W[PS + lane] = W[TN + lane], W[RN + lane], W[PN + lane]
-
-
-@compiled
-def interpolate_one(W: Any, lane: Any, C: Any) -> None:
-    """The interpolant of one lane's step, by scalar code: worth it where few lanes need theirs."""
-    f = interpolant(
-        W[T + lane], W[R + lane], W[PHI + lane], W[STEP + lane], W[RN + lane], W[PN + lane], W[K1 + lane], W[L1 + lane],
-        stages_of(W, lane), particle(W, lane), C, drivers(W, D0 + lane, LANES),
-    )  # fmt: skip
-    for i in range(16):
-        W[F0 + i * LANES + lane] = f[i]
 
 
 @inlined
@@ -192,7 +185,9 @@ def accept(lane: Any, W: Any) -> None:
 
 
 @inlined
-def observe(j: Any, r: Any, phi: Any, energy: Any, pitch: Any, p: Any, C: Any) -> None:
-    """Turn the saved (r, phi) of one particle's time `j` into r, local time, energy and pitch angle, in place; NaN
-    stays NaN."""
-    phi[j], energy[j], pitch[j] = observed(r[j], phi[j], p, C)
+def observe(
+    j: Any, r: Any, phi: Any, distance: Any, mlt: Any, energy: Any, pitch: Any, p: Any, C: Any
+) -> None:  # fmt: skip
+    """Put the saved place of one particle's time `j` into its track: r, local time, energy and pitch angle."""
+    distance[j] = r[j]
+    mlt[j], energy[j], pitch[j] = observed(r[j], phi[j], p, C)

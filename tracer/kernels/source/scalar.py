@@ -10,7 +10,7 @@ from tracer.kernels.arith import TWO_PI, compiled, entry_point, rough_power
 
 from .advance import (
     BAD_STEPS, CAUSE, CONE_OFF, CONE_STOP, CONE_TIME, DRIFTING, END_ENERGY, END_MLT, END_PITCH, END_R, FAILED,
-    GOOD_STEPS, TIME, TURNED, segment_at,
+    GOOD_STEPS, TIME, TURNED, first_saved, segment_at,
 )  # fmt: skip
 from .crossing import CONE, INNER, NEVER, OUTER, excess, first_crossing, initial_step
 from .drift import depth_in_cone, observed, slope_at
@@ -97,7 +97,7 @@ def follow(P: Any, C: Any, edges: Any, segments: Any, rules: Any, times: Any, en
     seg = segment_at(edges, t, sign)
     D = drivers(segments[seg], 0, 1)
     k1, l1 = slope_at(t, r, phi, p, C, D)
-    j = np.searchsorted(sign * times, sign * t)
+    j = first_saved(times, t, sign)
     if j < times.size and times[j] == t:
         write(track, i, j, r, phi, p, C)
         j += 1
