@@ -19,6 +19,11 @@ VACUUM_PERMEABILITY = 1.25663706127e-06  # N A^-2, CODATA 2022
 EARTH_RADIUS_KM = 6371.2  # geomagnetic reference radius of the IGRF (Alken et al. 2021)
 EARTH_RADIUS_M = EARTH_RADIUS_KM * 1e3
 
+# Orbits: IERS Conventions (2010), Technical Note 36, table 1.1 (from memory; held against sgp4's WGS 84 by a test)
+EARTH_GM_KM3_S2 = 398600.4418
+EARTH_J2 = 1.0826359e-3
+EARTH_EQUATOR_KM = 6378.1366
+
 SOLAR_DAY_H = 24.0
 ROTATION_RAD_PER_H = 2.0 * math.pi / SOLAR_DAY_H  # the solar-magnetic frame follows the Sun
 

@@ -18,7 +18,8 @@ from fields.errors import InputError
 from fields.units import Floats
 from tracer import sobol
 from tracer.records import PARTICLE
-from tracer.scenario import Population, Quantity, Scenario
+from tracer.scenario import Population, Scenario
+from tracer.spacing import ends, grid_points, spaced
 
 COORDINATES = ("r_re", "mlt_h", "energy_keV", "pitch_deg", "release_h")  # the order of Population.quantities()
 
@@ -97,13 +98,7 @@ def _grid(population: Population, index: Index) -> dict[str, Floats]:
     places = np.unravel_index(index, tuple(q.size for q in quantities))
     columns = {}
     for name, quantity, place in zip(COORDINATES, quantities, places):
-        if quantity.kind == "range":
-            begin, end = _ends(name, quantity)
-            closed = name == "mlt_h" and end - begin == 24.0  # both ends of a full circle are one place
-            intervals = quantity.n if closed else max(quantity.n - 1, 1)
-            columns[name] = spaced(place / intervals, begin, end, quantity.spacing)
-        else:
-            columns[name] = np.asarray(quantity.values, dtype=float)[place]
+        columns[name] = grid_points(name, quantity, place)
     return columns
 
 
@@ -117,17 +112,11 @@ def _drawn(population: Population, index: Index) -> dict[str, Floats]:
         if quantity.kind == "list":
             raise InputError("a list in a draw", 'a number, a range, or draw = "grid"', key=f"{population.name}.{name}")
         if quantity.kind == "range":
-            begin, end = _ends(name, quantity)
+            begin, end = ends(name, quantity)
             columns[name] = spaced(cube[:, ranged.index(name)], begin, end, quantity.spacing)
         else:
             columns[name] = np.full(index.size, quantity.values[0], dtype=float)
     return columns
-
-
-def _ends(name: str, quantity: Quantity) -> tuple[float, float]:
-    """Both ends of a range; local time runs eastward, through midnight when it ends below its start."""
-    begin, end = quantity.values
-    return (begin, end + 24.0) if name == "mlt_h" and end < begin else (begin, end)
 
 
 def random_points(population: Population, dimensions: int, index: Index) -> Floats:
@@ -163,45 +152,4 @@ def sobol_points(population: Population, dimensions: int, index: Index) -> Float
 UNIT_CUBES: dict[str, Callable[[Population, int, Index], Floats]] = {
     "sobol": sobol_points,
     "random": random_points,
-}
-
-
-def spaced(u: Floats, begin: float, end: float, spacing: str) -> Floats:
-    """The value at the fraction `u` of a range, 0 to 1; both ends come out exactly.
-
-    ``linear``: uniform; ``area``: uniform in the square; ``log``: uniform in the logarithm; ``isotropic``: angles in
-    degrees, uniform in their cosine.
-    """
-    between = SPACINGS[spacing](u, begin, end)
-    inside = np.clip(between, min(begin, end), max(begin, end))
-    return np.where(u <= 0.0, begin, np.where(u >= 1.0, end, inside))
-
-
-def _linear(u: Floats, begin: float, end: float) -> Floats:
-    return begin + (end - begin) * u
-
-
-def _area(u: Floats, begin: float, end: float) -> Floats:
-    return np.sqrt(begin * begin + (end - begin) * (end + begin) * u)
-
-
-def _log(u: Floats, begin: float, end: float) -> Floats:
-    return np.asarray(begin * np.exp(u * np.log(end / begin)))
-
-
-def _isotropic(u: Floats, begin: float, end: float) -> Floats:
-    """cos a uniform: from the complement near 90 degrees, from 1 - cos a = 2 sin^2(a/2) near 0, so no digits
-    cancel."""
-    cosine = _linear(u, *np.sin(np.radians([90.0 - begin, 90.0 - end])))
-    half_versine = _linear(u, *np.sin(np.radians([begin / 2, end / 2])) ** 2)
-    near_90 = 90.0 - np.degrees(np.arcsin(np.clip(cosine, -1.0, 1.0)))
-    near_0 = 2.0 * np.degrees(np.arcsin(np.sqrt(np.clip(half_versine, 0.0, 1.0))))
-    return np.where(cosine < 0.5, near_90, near_0)
-
-
-SPACINGS: dict[str, Callable[[Floats, float, float], Floats]] = {
-    "linear": _linear,
-    "area": _area,
-    "log": _log,
-    "isotropic": _isotropic,
 }

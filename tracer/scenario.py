@@ -5,13 +5,16 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 from datetime import datetime
 from functools import cached_property
-from typing import Literal
+from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
 from fields import constants
 from fields.field import Field
 from fields.units import Floats
+
+if TYPE_CHECKING:
+    from tracer.access_plan import AccessRequest, OrbitRequest
 
 Spacing = Literal["linear", "area", "log", "isotropic"]
 
@@ -148,6 +151,13 @@ class Scenario:
     loss_cone: Literal["off", "flag", "stop"]
     output: Output
     origin: Origin
+    access: AccessRequest | None = None
+    orbits: tuple[OrbitRequest, ...] = ()
+
+    @property
+    def equatorial(self) -> bool:
+        """Whether every particle mirrors at the equator."""
+        return all(p.pitch_deg.low == p.pitch_deg.high == 90.0 for p in self.populations)
 
     @property
     def direction(self) -> float:

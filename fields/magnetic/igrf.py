@@ -1,4 +1,4 @@
-"""The dipole part of the IGRF through time.
+"""The dipole part of the IGRF through time: how strong it is and where it points.
 
 Degree-1 Gauss coefficients of the 14th generation of the International Geomagnetic Reference Field (IAGA Working
 Group V-MOD; Alken et al. 2021, Earth Planets Space 73, 49, and its 2024 update), nT, every five years; 2030 by its
@@ -8,6 +8,9 @@ secular variation. A test holds the table equal to the published coefficient fil
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import ArrayLike
+
+from fields.units import Floats
 
 # epoch: g10, g11, h11
 COEFFICIENTS = {
@@ -50,7 +53,45 @@ def dipole_field_nT(epoch: float) -> float:
     ValueError
         Outside 1900 to 2030.
     """
-    if not EPOCHS[0] <= epoch <= EPOCHS[-1]:
-        raise ValueError(f"epoch {epoch} outside {EPOCHS[0]} to {EPOCHS[-1]}")
-    table = np.array([COEFFICIENTS[e] for e in EPOCHS])
-    return float(np.sqrt(sum(np.interp(epoch, EPOCHS, column) ** 2 for column in table.T)))
+    return float(np.sqrt(sum(column**2 for column in coefficients(epoch))))
+
+
+def dipole_axis(epoch: ArrayLike) -> Floats:
+    """The direction of the dipole axis, from the Earth's centre to the geomagnetic north pole.
+
+    The moment is along (g11, h11, g10); the axis is opposite to it, so that it points north.
+
+    Parameters
+    ----------
+    epoch : array_like
+        Decimal years.
+
+    Returns
+    -------
+    ndarray, shape (..., 3)
+        Unit vectors in the geographic frame: x to longitude 0, y to 90 degrees east, z to the north pole.
+
+    Raises
+    ------
+    ValueError
+        Outside 1900 to 2030.
+    """
+    g10, g11, h11 = coefficients(epoch)
+    moment = np.stack([g11, h11, g10], axis=-1)
+    return np.asarray(-moment / np.linalg.norm(moment, axis=-1, keepdims=True))
+
+
+def coefficients(epoch: ArrayLike) -> tuple[Floats, Floats, Floats]:
+    """g10, g11, h11 in nT at decimal years, linear in time between epochs.
+
+    Raises
+    ------
+    ValueError
+        Outside 1900 to 2030.
+    """
+    year = np.asarray(epoch, dtype=float)
+    outside = ~((year >= EPOCHS[0]) & (year <= EPOCHS[-1]))
+    if np.any(outside):
+        raise ValueError(f"epoch {year[outside].flat[0]} outside {EPOCHS[0]} to {EPOCHS[-1]}")
+    g10, g11, h11 = (np.asarray(np.interp(year, EPOCHS, column)) for column in zip(*COEFFICIENTS.values(), strict=True))
+    return g10, g11, h11

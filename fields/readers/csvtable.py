@@ -34,7 +34,7 @@ def read_csv(text: TextFile, name: str, column: str | None) -> Rows:
     InputError
         Naming the line and what stands there.
     """
-    table = _table(text)
+    table = table_rows(text)
     try:
         line, header = next(table)
     except StopIteration:
@@ -65,7 +65,7 @@ def read_csv(text: TextFile, name: str, column: str | None) -> Rows:
     return found.rows(header[value_at])
 
 
-def _table(text: TextFile) -> Iterator[tuple[int, list[str]]]:
+def table_rows(text: TextFile) -> Iterator[tuple[int, list[str]]]:
     """Line number and stripped cells of every line that holds something; the first one is the header."""
     delimiter = ""
     for line, content in enumerate(text.lines, start=1):

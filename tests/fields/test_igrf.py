@@ -7,9 +7,10 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from tolerances import bound
 
 from fields.magnetic.dipole import Dipole
-from fields.magnetic.igrf import COEFFICIENTS, EPOCHS, dipole_field_nT
+from fields.magnetic.igrf import COEFFICIENTS, EPOCHS, dipole_axis, dipole_field_nT
 
 
 def published() -> dict[float, tuple[float, float, float]]:
@@ -57,3 +58,33 @@ def test_epochs_outside_the_table_are_refused(epoch: float) -> None:
 
 def test_the_dipole_takes_its_field_from_an_epoch() -> None:
     assert Dipole(epoch=2025.0).reference_b0_nT() == dipole_field_nT(2025.0)
+
+
+# Geomagnetic north pole (geodetic latitude, east longitude): World Data Center for Geomagnetism, Kyoto, to one decimal,
+# and for 2020 the paper of the IGRF-13 (Alken et al. 2021, Earth Planets Space 73, 49); from memory.
+FLATTENING = 1.0 / 298.257223563  # WGS 84
+PUBLISHED_POLES = {1900.0: (78.7, -68.8), 2000.0: (79.6, -71.6), 2020.0: (80.65, -72.68)}
+
+
+@pytest.mark.parametrize("epoch", PUBLISHED_POLES)
+def test_the_axis_leads_to_the_published_pole(epoch: float) -> None:
+    x, y, z = dipole_axis(epoch)
+    place = np.degrees([np.arctan2(z, np.hypot(x, y) * (1.0 - FLATTENING) ** 2), np.arctan2(y, x)])
+    assert place == pytest.approx(PUBLISHED_POLES[epoch], abs=bound("pole position deg"))
+
+
+def test_the_axis_is_opposite_to_the_published_moment() -> None:
+    for epoch, (g10, g11, h11) in published().items():
+        axis = dipole_axis(epoch)
+        assert np.linalg.norm(axis) == pytest.approx(1.0, rel=bound("rounding"))
+        moment = np.array([g11, h11, g10])
+        assert axis == pytest.approx(-moment / np.linalg.norm(moment), rel=bound("rounding"))
+
+
+def test_axes_of_many_epochs_at_once() -> None:
+    epochs = np.array([[1900.0, 1999.5], [2027.2, 2030.0]])
+    axes = dipole_axis(epochs)
+    assert axes.shape == (2, 2, 3)
+    assert axes[1, 0] == pytest.approx(dipole_axis(2027.2), rel=bound("rounding"))
+    with pytest.raises(ValueError, match=r"2030\.1"):
+        dipole_axis([2000.0, 2030.1])

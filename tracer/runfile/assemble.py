@@ -12,14 +12,17 @@ import tomli_w
 from pydantic import ValidationError
 
 from fields.errors import InputError
-from tracer.runfile.faults import first, translated
+from tracer.access_plan import OrbitRequest
+from tracer.runfile.access import access_request
+from tracer.runfile.faults import Fault, first, translated
 from tracer.runfile.histories import read_histories, written_out
 from tracer.runfile.models import build_field, model_faults, references
+from tracer.runfile.orbits import read_orbits
 from tracer.runfile.places import fault
 from tracer.runfile.populations import populations, refuse_lost
 from tracer.runfile.quantities import rules
 from tracer.runfile.reading import parse, plain_tables, read_text
-from tracer.runfile.schema import DomainTable, RunTables, TimeTable
+from tracer.runfile.schema import AccessTable, DomainTable, RunTables, TimeTable
 from tracer.runfile.size import refuse_absurd
 from tracer.scenario import Domain, Origin, Output, Scenario
 
@@ -72,7 +75,11 @@ def _scenario(tables: dict[str, Any], base: FilePath, file: str, text: str) -> S
     domain = _domain(checked.domain)
     histories = read_histories(checked.series, references(tables), base, start, end_h)
     field = build_field(tables, histories.drivers)
-    found = populations(checked.population, rules(domain.inner_re, domain.outer_re, end_h))
+    allowed = rules(domain.inner_re, domain.outer_re, end_h)
+    found = populations(checked.population, allowed)
+    orbits = read_orbits(checked.orbit, base, start, end_h)
+    asked = checked.access
+    access = None if asked is None else access_request(asked, allowed, domain, len(orbits.requests))
     output = Output(**checked.output.model_dump())
     refuse_absurd(found, checked.time.hours, output)
     if checked.losses.loss_cone == "stop":
@@ -88,7 +95,14 @@ def _scenario(tables: dict[str, Any], base: FilePath, file: str, text: str) -> S
         populations=found,
         loss_cone=checked.losses.loss_cone,
         output=output,
-        origin=Origin(file, text, dict(histories.input_sha256), histories.remarks()),
+        origin=Origin(
+            file,
+            text,
+            {**histories.input_sha256, **orbits.input_sha256},
+            (*histories.remarks(), *orbits.remarks, *_unused(asked, orbits.requests)),
+        ),
+        access=access,
+        orbits=orbits.requests,
     )
 
 
@@ -99,11 +113,22 @@ def _checked(tables: dict[str, Any]) -> RunTables:
         checked = RunTables.model_validate(tables)
     except ValidationError as error:
         faults += translated(tables, error)
-    worst = first(tables, faults)
+    worst = first(tables, faults + _nothing_asked(tables))
     if worst is not None:
         raise worst
     assert checked is not None
     return checked
+
+
+def _nothing_asked(tables: dict[str, Any]) -> list[Fault]:
+    if "access" in tables or tables.get("population", []) != []:
+        return []
+    place = ("population",)
+    return [(place, fault(place, None, "missing", "at least one [[population]], or [access]"))]
+
+
+def _unused(access: AccessTable | None, orbits: tuple[OrbitRequest, ...]) -> tuple[str, ...]:
+    return () if access is not None else tuple(f"orbit {orbit.name} is used by [access] only" for orbit in orbits)
 
 
 def _start(table: TimeTable) -> datetime:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable
 from datetime import date
-from typing import Any
+from typing import Any, Literal, get_args, get_origin
 
 from pydantic import ValidationError
 from pydantic.fields import FieldInfo
@@ -27,12 +27,13 @@ WRONG_TYPE = {
     "datetime_type": "a date and time such as 2027-03-04T00:00:00Z, without quotes",
     "list_type": "a list in [ ]",
 }
+WITH_EXAMPLE = ("float_type", "int_type", "model_type", "dict_type")
 UNIONS = {
     "species": 'a name such as "H+", or { mass_u = 16.0, charge = 1 }',
     "series": 'a table, for example file = "kp.csv"',
 }
 QUANTITY = "a number, a range { from = 1.0, to = 2.0 }, or for a grid a list"
-WITH_UNIT = re.compile(r"(.+?)_(re|km|h|min|deg|keV|kV|nT|mV_per_m|nT_per_re|u)")
+WITH_UNIT = re.compile(r"(.+?)_(re|km|h|hours|min|deg|keV|kV|nT|mV_per_m|nT_per_re|u)")
 BOUNDS = {
     "greater_than": ("gt", "above"),
     "greater_than_equal": ("ge", "of at least"),
@@ -99,7 +100,7 @@ def _wanted(path: Path, value: Any, kind: str) -> str:
     if kind in ("model_type", "dict_type") and len(path) == 1:
         return f"a single table [{path[0]}]"
     info, wanted = _field(path), WRONG_TYPE.get(kind, "another value")
-    example = f" such as {info.examples[0]}" if info and info.examples and kind in ("float_type", "int_type") else ""
+    example = f" such as {info.examples[0]}" if info and info.examples and kind in WITH_EXAMPLE else ""
     return wanted + example
 
 
@@ -118,8 +119,6 @@ def _field(path: Path) -> FieldInfo | None:
 def _example(path: Path) -> str:
     if path[-1] in ("time", "magnetic") and len(path) == 1:
         return f"a table [{path[-1]}]"
-    if path == ("population",):
-        return "at least one [[population]]"
     info = _field(path)
     if info is None or not (info.examples or isinstance(info.default, float)):
         return "a value"
@@ -129,12 +128,19 @@ def _example(path: Path) -> str:
 
 def _choices(path: Path) -> list[str]:
     info = _field(path)
-    return [] if info is None else [str(choice) for choice in getattr(info.annotation, "__args__", ())]
+    return [] if info is None else _literals(info.annotation)
+
+
+def _literals(annotation: Any) -> list[str]:
+    """The choices of a Literal, or of one that may be left out."""
+    if get_origin(annotation) is Literal:
+        return [str(choice) for choice in get_args(annotation)]
+    return [choice for member in get_args(annotation) for choice in _literals(member)]
 
 
 def _home(place: tuple[str, ...]) -> str:
     if not place:
         return "at the top, before the first table"
-    double = place[0] in ("population", "electric")
+    double = place[0] in ("population", "electric", "orbit")
     table = ".".join("NAME" if part == "*" else part for part in place)
     return f"in [[{table}]]" if double else f"in [{table}]"

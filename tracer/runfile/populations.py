@@ -35,7 +35,7 @@ def populations(tables: Sequence[PopulationTable], rules: dict[str, Rule]) -> tu
         path: Path = ("population", i)
         if table.name is not None and any(table.name == earlier.name for earlier in found):
             raise fault((*path, "name"), table.name, "given to two populations", "a name of its own")
-        species = _species((*path, "species"), table.species)
+        species = species_of((*path, "species"), table.species)
         name = table.name if table.name is not None else _free_name(species.name, taken)
         taken.add(name)
         found.append(_population(path, table, name, species, rules))
@@ -60,7 +60,13 @@ def _population(path: Path, table: PopulationTable, name: str, species: Species,
     return Population(name, species, count, table.draw, seed, **given)
 
 
-def _species(path: Path, given: str | SpeciesTable) -> Species:
+def species_of(path: Path, given: str | SpeciesTable) -> Species:
+    """A species by its name, or of a table's mass and charge.
+
+    Raises
+    ------
+    InputError
+    """
     if isinstance(given, SpeciesTable):
         if given.charge == 0:
             raise fault((*path, "charge"), 0, "a neutral particle does not drift", "a whole number other than 0")

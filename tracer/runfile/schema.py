@@ -84,6 +84,10 @@ def _species_tag(value: Any) -> str | None:
     return "<table>" if isinstance(value, (dict, SpeciesTable)) else None
 
 
+def _several_tag(value: Any) -> str | None:
+    return "<list>" if isinstance(value, list) else _species_tag(value)
+
+
 def _series_tag(value: Any) -> str | None:
     if isinstance(value, Series):
         return "<object>"
@@ -96,6 +100,12 @@ QuantityValue = Annotated[
 ]
 SpeciesValue = Annotated[
     Annotated[str, Tag("<name>")] | Annotated[SpeciesTable, Tag("<table>")], Discriminator(_species_tag)
+]
+SpeciesValues = Annotated[
+    Annotated[str, Tag("<name>")]
+    | Annotated[SpeciesTable, Tag("<table>")]
+    | Annotated[list[SpeciesValue], Tag("<list>")],
+    Discriminator(_several_tag),
 ]
 SeriesValue = Annotated[
     Annotated[SeriesTable, Tag("<table>")] | Annotated[Series, Tag("<object>")], Discriminator(_series_tag)
@@ -131,6 +141,57 @@ class OutputTable(Table):
     tracks: Literal["double", "single"] = "double"
 
 
+class SpanTable(Table):
+    """``{ from, to }``: local times, eastward."""
+
+    from_: float = Field(alias="from", ge=0.0, le=24.0, examples=["18.0"])
+    to: float = Field(ge=0.0, le=24.0, examples=["6.0"])
+
+
+class SourceTable(Table):
+    """``{ r_re, mlt_h }``: the piece of the outer boundary from which particles come."""
+
+    r_re: float | None = None
+    mlt_h: SpanTable | None = Field(default=None, examples=["{ from = 18.0, to = 6.0 }"])
+
+
+class AccessTable(Table):
+    """``[access]``: what is asked to be reached, and from where."""
+
+    species: SpeciesValues = Field(examples=['["H+", "e-"]'])
+    energy_keV: QuantityValue = Field(examples=["[1.0, 10.0, 100.0]"])
+    pitch_deg: QuantityValue = Field(examples=["90.0"])
+    r_re: QuantityValue | None = None
+    mlt_h: QuantityValue | None = None
+    time_h: QuantityValue | None = None
+    back_hours: float = Field(default=24.0, gt=0.0, le=LONGEST_H)
+    source: SourceTable | None = Field(default=None, examples=["{ mlt_h = { from = 18.0, to = 6.0 } }"])
+
+
+class ElementsTable(Table):
+    """``elements = { ... }``: Keplerian elements of an orbit."""
+
+    epoch: datetime = Field(examples=["2027-03-04T00:00:00Z"])
+    a_re: float = Field(gt=0.0, le=100.0, examples=["4.0"])
+    e: float = Field(ge=0.0, lt=1.0, examples=["0.7"])
+    i_deg: float = Field(ge=0.0, le=180.0, examples=["7.0"])
+    raan_deg: float = Field(ge=-360.0, le=360.0, examples=["0.0"])
+    argp_deg: float = Field(ge=-360.0, le=360.0, examples=["180.0"])
+    m_deg: float = Field(ge=-360.0, le=360.0, examples=["0.0"])
+
+
+class OrbitTable(Table):
+    """``[[orbit]]``: a spacecraft, and where it is."""
+
+    name: str = Field(min_length=1, max_length=64, examples=['"transfer"'])
+    every_min: float = Field(default=5.0, gt=0.0, le=60.0 * LONGEST_H)
+    elements: ElementsTable | None = Field(default=None, examples=["{ epoch = 2027-03-04T00:00:00Z, a_re = 4.0, ... }"])
+    tle: str | None = Field(default=None, min_length=1, examples=['"satellite.tle"'])
+    oem: str | None = Field(default=None, min_length=1, examples=['"satellite.oem"'])
+    csv: str | None = Field(default=None, min_length=1, examples=['"satellite.csv"'])
+    frame: Literal["SM", "GEO", "ITRF", "GCRS", "TEME"] | None = None
+
+
 class RunTables(Table):
     """The whole run file. Field models stay plain tables here: their cards say what they take."""
 
@@ -140,12 +201,15 @@ class RunTables(Table):
     series: dict[str, SeriesValue] = Field(default_factory=dict)
     magnetic: dict[str, Any]
     electric: list[dict[str, Any]] = Field(default_factory=list)
-    population: list[PopulationTable] = Field(min_length=1)
+    population: list[PopulationTable] = Field(default_factory=list)
+    access: AccessTable | None = None
+    orbit: list[OrbitTable] = Field(default_factory=list)
     losses: LossesTable = LossesTable()
     output: OutputTable = OutputTable()
 
 
 QUANTITIES = ("r_re", "mlt_h", "energy_keV", "pitch_deg", "release_h")
+ACCESS_AXES = ("energy_keV", "pitch_deg", "r_re", "mlt_h", "time_h")
 TABLES: dict[tuple[str, ...], type[Table]] = {
     (): RunTables,
     ("time",): TimeTable,
@@ -156,6 +220,13 @@ TABLES: dict[tuple[str, ...], type[Table]] = {
     ("losses",): LossesTable,
     ("output",): OutputTable,
     **{("population", name): RangeTable for name in QUANTITIES},
+    ("access",): AccessTable,
+    ("access", "species"): SpeciesTable,
+    ("access", "source"): SourceTable,
+    ("access", "source", "mlt_h"): SpanTable,
+    **{("access", name): RangeTable for name in ACCESS_AXES},
+    ("orbit",): OrbitTable,
+    ("orbit", "elements"): ElementsTable,
 }
 
 
