@@ -45,9 +45,14 @@ class Pilot:
 
 def sample(scenario: Scenario, size: int, seed: int) -> np.ndarray:
     """Sorted indices of `size` particles drawn without repetition; all of them when there are no more."""
-    if scenario.count <= size:
-        return np.arange(scenario.count)
-    return np.sort(np.random.default_rng(seed).choice(scenario.count, size, replace=False))
+    return sample_of(scenario.count, size, seed)
+
+
+def sample_of(count: int, size: int, seed: int) -> np.ndarray:
+    """The same of `count` things."""
+    if count <= size:
+        return np.arange(count)
+    return np.sort(np.random.default_rng(seed).choice(count, size, replace=False))
 
 
 def states_of(scenario: Scenario, index: np.ndarray) -> Floats:
@@ -74,6 +79,11 @@ def quantiles(apart: Floats) -> Errors:
 
 
 def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
+    """The local tolerance for the particles of a run, from a sample; see `pilot_of`."""
+    return pilot_of(scenario, kernel, states_of(scenario, sample(scenario, PILOTS, PILOT_SEED)))
+
+
+def pilot_of(scenario: Scenario, kernel: Kernel, state: Floats) -> Pilot:
     """Find the local tolerance with which 99 % of the ends fall within the target.
 
     A sample is traced at two local tolerances. The finer one stands for the truth, the difference is the error of the
@@ -83,7 +93,6 @@ def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
     say how far off they are, the sample is traced again, finer.
     """
     target = scenario.output.tolerance_re
-    state = states_of(scenario, sample(scenario, PILOTS, PILOT_SEED))
     coarse = COARSE * target
     while True:
         coarse = max(coarse, 100.0 * FINEST)
@@ -101,7 +110,11 @@ def run_pilot(scenario: Scenario, kernel: Kernel) -> Pilot:
 
 def audit(scenario: Scenario, kernel: Kernel, local_tolerance: float) -> Errors:
     """Re-run a sample, other than the pilot's, a thousand times finer, and say how far the ends lie apart."""
-    state = states_of(scenario, sample(scenario, PILOTS, AUDIT_SEED))
+    return audit_of(scenario, kernel, states_of(scenario, sample(scenario, PILOTS, AUDIT_SEED)), local_tolerance)
+
+
+def audit_of(scenario: Scenario, kernel: Kernel, state: Floats, local_tolerance: float) -> Errors:
+    """The same of given states."""
     kept, _ = advance(scenario, kernel, state, local_tolerance, np.empty(0))
     finer, _ = advance(scenario, kernel, state, max(FINE * local_tolerance, FINEST), np.empty(0))
     return quantiles(separation(kept, finer))

@@ -18,7 +18,7 @@ from tracer.records import END, PARTICLE, TRACK, Chunk
 from tracer.scenario import Scenario
 
 # Particles between two looks at the stop signal: as many as take the time below, which depends on what they are.
-FIRST_BATCH, LARGEST_BATCH = 64, 4096
+FIRST_BATCH, LARGEST_BATCH = 64, 16384
 BATCH_S = 0.2
 CONE_MODES = {"off": 0, "flag": 1, "stop": 2}
 END_ORDER = ("time_h", "r_re", "mlt_h", "energy_keV", "pitch_deg", "cause", "turns", "loss_cone_h")
@@ -155,17 +155,13 @@ def run_chunk(
 
 
 def compile_kernel(scenario: Scenario) -> Kernel:
-    """The scenario's kernel, ready to run: compiled or loaded from disk by a run over no particle."""
-    kernel = kernel_for(scenario.field, scenario.equatorial)
-    rules = (scenario.direction, 2.0, 1.0, 1.0, 0, 1.0)
-    kernel.module.advance(
-        np.zeros((0, 8)),
-        kernel.constants,
-        kernel.edges,
-        kernel.segments,
-        rules,
-        scenario.save_times_h,
-        np.zeros((0, 10)),
-        np.zeros((0, 4, scenario.save_times_h.size)),
-    )
+    """The scenario's kernel, ready to run."""
+    return warmed(kernel_for(scenario.field, scenario.equatorial), scenario.direction)
+
+
+def warmed(kernel: Kernel, direction: float) -> Kernel:
+    """A kernel ready to run: compiled, or loaded from the disk, by a run over no particle."""
+    rules = (direction, 2.0, 1.0, 1.0, 0, 1.0)
+    state, times, end, track = np.zeros((0, 8)), np.empty(0), np.zeros((0, 10)), np.zeros((0, 4, 0))
+    kernel.module.advance(state, kernel.constants, kernel.edges, kernel.segments, rules, times, end, track)
     return kernel

@@ -22,6 +22,8 @@ from tracer.scenario import Scenario
 
 FORMAT = "driftrose trajectories"
 FORMAT_VERSION = 1
+ACCESS_FORMAT = "driftrose access"
+ACCESS_VERSION = 1
 DIGEST = "attrs_sha256"
 LIBRARIES = ("numba", "numpy", "scipy", "h5py")
 

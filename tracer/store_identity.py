@@ -84,3 +84,8 @@ def _instructions(described: Mapping[str, str]) -> set[str]:
 
 def _sha256(text: str) -> str:
     return hashlib.sha256(text.encode("utf-8", "surrogatepass")).hexdigest()
+
+
+def damaged(name: str) -> InputError:
+    """The fault of an unfinished file that cannot be gone on with."""
+    return InputError("damaged, cannot be resumed", AGAIN, file=name)

@@ -83,7 +83,8 @@ def build_skeleton(file: h5py.File, scenario: Scenario, attrs: Mapping[str, Any]
                 single = scenario.output.tracks == "single"
                 dataset = _create_track(parent, column, (count, n_time), single, allocate)
             else:
-                dataset = create(parent, column, (count,), (rows,), allocate)
+                codes = {c.word: int(c) for c in Cause} if column.name == "cause" else None
+                dataset = create(parent, column, (count,), (rows,), allocate, codes)
             for axis, scale in zip(dataset.dims, scales):
                 axis.attach_scale(scale)
     if n_time:
@@ -138,9 +139,15 @@ def write_attrs(file: h5py.File, attrs: Mapping[str, Any]) -> None:
 
 
 def create(
-    parent: h5py.Group, column: Column, shape: tuple[int, ...], chunk: tuple[int, ...], allocate: bool
+    parent: h5py.Group,
+    column: Column,
+    shape: tuple[int, ...],
+    chunk: tuple[int, ...],
+    allocate: bool,
+    codes: Mapping[str, int] | None = None,
 ) -> h5py.Dataset:
-    """An empty, chunked, checksummed dataset with its unit and name; floats are NaN until written."""
+    """An empty, chunked, checksummed dataset with its unit and name; floats are NaN until written. `codes`: the words
+    of an enumeration."""
     dtype = np.dtype(column.dtype)
     plan = h5py.h5p.create(h5py.h5p.DATASET_CREATE)
     plan.set_chunk(chunk)
@@ -148,7 +155,7 @@ def create(
     plan.set_alloc_time(h5py.h5d.ALLOC_TIME_EARLY if allocate else h5py.h5d.ALLOC_TIME_INCR)
     if dtype.kind == "f":
         plan.set_fill_value(np.array(np.nan, dtype))
-    stored = h5py.enum_dtype({c.word: int(c) for c in Cause}, basetype="u1") if column.name == "cause" else dtype
+    stored = h5py.enum_dtype(dict(codes), basetype=dtype) if codes else dtype
     kind = h5py.h5t.py_create(np.dtype(stored), logical=True)
     space = h5py.h5s.create_simple(shape)
     dataset = h5py.Dataset(h5py.h5d.create(parent.id, column.name.encode(), kind, space, plan))
@@ -197,14 +204,15 @@ def _create_track(
 
 def _label_codes(file: h5py.File, scenario: Scenario) -> None:
     populations = [p.name for p in scenario.populations]
-    _label_flags(file["particle/population"], range(len(populations)), populations)
+    label_flags(file["particle/population"], range(len(populations)), populations)
     species = [s.name for s in scenario.species]
-    _label_flags(file["particle/species"], range(len(species)), species)
-    _label_flags(file["end/cause"], [int(c) for c in Cause], [c.word for c in Cause])
+    label_flags(file["particle/species"], range(len(species)), species)
+    label_flags(file["end/cause"], [int(c) for c in Cause], [c.word for c in Cause])
     label(file["end/cause"], comment="; ".join(f"{int(c)}: {c.sentence}" for c in Cause))
 
 
-def _label_flags(dataset: h5py.Dataset, values: Sequence[int], names: Sequence[str]) -> None:
+def label_flags(dataset: h5py.Dataset, values: Sequence[int], names: Sequence[str]) -> None:
+    """What the numbers of a dataset stand for, as CF has it."""
     dataset.attrs["flag_values"] = np.asarray(values, dtype=np.dtype(dataset.dtype.str))
     label(dataset, flag_meanings=" ".join(flag_word(n) for n in names))
 

@@ -6,9 +6,10 @@ import errno
 import fcntl
 import os
 import shutil
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from contextlib import contextmanager, suppress
 from pathlib import Path
+from typing import Any
 
 import h5py
 
@@ -66,9 +67,21 @@ def check_output(
     Raises
     ------
     InputError
+        See `check_place` and `check_room`.
+    """
+    check_place(path, overwrite, resume)
+    check_room(path, expected_bytes(scenario), 'fewer particles, a larger every_min, or tracks = "single"')
+
+
+def check_place(path: str | os.PathLike[str], overwrite: bool = False, resume: bool = False) -> None:
+    """See that an output may stand at `path`. Writes nothing.
+
+    Raises
+    ------
+    InputError
         When it exists and `overwrite` is false, is no regular file or a run file; when its directory is missing or
-        read-only; when the disk has less room than the file takes. When the file of an interrupted run stands there
-        and neither `overwrite` nor `resume` says what is to become of it; when there is none and `resume` is true.
+        read-only. When the file of an interrupted run stands there and neither `overwrite` nor `resume` says what is
+        to become of it; when there is none and `resume` is true.
     """
     target, name = Path(path), str(path)
     check_replaced(target, overwrite or resume)
@@ -78,12 +91,23 @@ def check_output(
     if not os.access(parent, os.W_OK | os.X_OK):
         raise InputError(f"the directory {parent} is read-only", "a directory that can be written", file=name)
     _check_leftover(name, overwrite, resume)
-    needed, free = expected_bytes(scenario), shutil.disk_usage(parent).free
+
+
+def check_room(path: str | os.PathLike[str], needed: int, smaller: str) -> None:
+    """See that the disk has room for an output of `needed` bytes; `smaller` says how to make do with less.
+
+    Raises
+    ------
+    InputError
+        When it has not.
+    """
+    name = str(path)
+    free = shutil.disk_usage(Path(path).parent).free
     with suppress(OSError):
         free += os.stat(name + PART).st_blocks * 512  # a leftover gives its room back, or has it already
     if free < needed:
-        remedy = 'another disk, fewer particles, a larger every_min, or tracks = "single"'
-        raise InputError(f"the file takes {size_text(needed)}, the disk has {size_text(free)} free", remedy, file=name)
+        problem = f"the file takes {size_text(needed)}, the disk has {size_text(free)} free"
+        raise InputError(problem, f"another disk, {smaller}", file=name)
 
 
 def finished(path: str | os.PathLike[str], scenario: Scenario) -> Result | None:
@@ -99,16 +123,27 @@ def finished(path: str | os.PathLike[str], scenario: Scenario) -> Result | None:
     if not target.exists() or (part.exists() and log.exists() and not part.samefile(target)):
         return None
     result = read(target)
-    computed_with = {**versions(), **processor()}
-    for key, value in provenance(scenario).items():
-        if key not in computed_with and result.attrs.get(key) != value:
-            remedy = "another name for the output, or --overwrite in place of --resume"
-            raise InputError("is complete, but of another run", remedy, key=key, file=name)
+    refuse_other_run(result.attrs, provenance(scenario), name)
     if part.exists() and part.samefile(target):  # a kill between the last two steps
         part.unlink()
     if not part.exists():
         log.unlink(missing_ok=True)
     return result
+
+
+def refuse_other_run(found: Mapping[str, Any], wanted: Mapping[str, Any], name: str) -> None:
+    """See that the root attributes of a complete file are those of a run; what it was computed with may differ.
+
+    Raises
+    ------
+    InputError
+        Naming the first that is not.
+    """
+    computed_with = {**versions(), **processor()}
+    for key, value in wanted.items():
+        if key not in computed_with and found.get(key) != value:
+            remedy = "another name for the output, or --overwrite in place of --resume"
+            raise InputError("is complete, but of another run", remedy, key=key, file=name)
 
 
 def check_replaced(target: Path, allowed: bool) -> None:

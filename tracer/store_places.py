@@ -47,10 +47,11 @@ class Place:
 def places_of(file: h5py.File) -> dict[str, Place]:
     """Every dataset that has a row for each particle, by its name."""
     names = [f"{group}/{column.name}" for group, columns in GROUPS.items() if group in file for column in columns]
-    return {name: _place(file[name]) for name in ("particle_index", *names)}
+    return {name: place_of(file[name]) for name in ("particle_index", *names)}
 
 
-def _place(dataset: h5py.Dataset) -> Place:
+def place_of(dataset: h5py.Dataset) -> Place:
+    """Where the chunks of a dataset stand."""
     grid = tuple(-(-size // step) for size, step in zip(dataset.shape, dataset.chunks))
     offsets, sizes = np.zeros(grid, np.int64), np.zeros(grid, np.int64)
 

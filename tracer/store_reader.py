@@ -17,18 +17,26 @@ import numpy as np
 from fields.drivers import Driver
 from fields.errors import InputError
 from tracer.records import GROUPS, Column, Result
-from tracer.store_attrs import DIGEST, FORMAT, FORMAT_VERSION, digest, plain_value
+from tracer.store_attrs import ACCESS_FORMAT, DIGEST, FORMAT, FORMAT_VERSION, digest, plain_value
 from tracer.store_seal import fault
 
 SIGNATURE = b"\x89HDF\r\n\x1a\n"
 TABLE_HEADER = re.compile(r"^\s*\[{1,2}\s*[A-Za-z_\"'][^\[\]]*\]{1,2}\s*(#.*)?$", re.MULTILINE)
 LOOKED_AT = 2**20  # bytes by which a text file is told
 MAKE_ONE = "a file made by driftrose trace"
+MADE_BY = {FORMAT: MAKE_ONE, ACCESS_FORMAT: "a file made by driftrose access"}
+NAMED = {FORMAT: "a trajectory file", ACCESS_FORMAT: "an access file"}
+FIRST = {
+    FORMAT: "trace it first, then name the .h5 file",
+    ACCESS_FORMAT: "driftrose access on it first, then name the .access.h5 file",
+}
 AGAIN = "trace the run again"
+KINDS: dict[Any, Literal["trajectories", "access"]] = {FORMAT: "trajectories", ACCESS_FORMAT: "access"}
 
 
-def kind(path: str | os.PathLike[str]) -> Literal["run file", "trajectories", "other"]:
-    """What a file is, by its content: TOML (faulty or not), a trajectory file of any state, or something else.
+def kind(path: str | os.PathLike[str]) -> Literal["run file", "trajectories", "access", "other"]:
+    """What a file is, by its content: TOML (faulty or not), a trajectory file of any state, a result about access, or
+    something else.
 
     Raises
     ------
@@ -41,7 +49,7 @@ def kind(path: str | os.PathLike[str]) -> Literal["run file", "trajectories", "o
             if fault(path):
                 return "other"
             with h5py.File(path, "r", locking=False) as file:
-                return "trajectories" if plain_value(file.attrs.get("format")) == FORMAT else "other"
+                return KINDS.get(plain_value(file.attrs.get("format")), "other")
         except (OSError, RuntimeError, KeyError, ValueError, TypeError):
             return "other"
     return "run file" if _looks_like_toml(head) else "other"
@@ -56,9 +64,9 @@ def open(path: str | os.PathLike[str]) -> Result:
         When it is missing, no trajectory file, of a newer format, incomplete, truncated or damaged. A column whose
         checksum does not fit raises when it is read.
     """
-    _refuse_other(path)
-    with _readable(path, "") as file:
-        attrs = _checked_attrs(file, str(path))
+    refuse_content(path)
+    with readable(path, "") as file:
+        attrs = checked_attrs(file, str(path))
         count = _checked_shapes(file, str(path))
         time = np.asarray(_read(path, file, "time")) if "time" in file else np.empty(0)
         drivers = tuple(_driver(path, file, n, **texts) for n, texts in enumerate(json.loads(attrs["drivers"])))
@@ -115,7 +123,7 @@ class Columns(Mapping[str, np.ndarray]):
 
     def _at(self, column: Column, rows: np.ndarray | slice) -> np.ndarray:
         name = f"{column.group}/{column.name}"
-        with _readable(self._path, f"/{name}", self._shown) as file:
+        with readable(self._path, f"/{name}", self._shown) as file:
             data = np.asarray(file[name][rows])
             return data.astype(np.uint8) if column.name == "cause" else data
 
@@ -149,21 +157,23 @@ def _looks_like_toml(head: bytes) -> bool:
         return False
 
 
-def _refuse_other(path: str | os.PathLike[str]) -> None:
+def refuse_content(path: str | os.PathLike[str], wanted: str = FORMAT, again: str = AGAIN) -> None:
+    """See that a file is HDF5, with its seal unbroken where it has one."""
     head = _head(path)
     if head.startswith(SIGNATURE):
         if problem := fault(path):
-            raise InputError(problem, AGAIN, file=str(path))
+            raise InputError(problem, again, file=str(path))
         return
+    named = NAMED[wanted]
     if _looks_like_toml(head):
-        problem = "a run file where a trajectory file belongs"
-        raise InputError(problem, "trace it first, then name the .h5 file", file=str(path))
-    problem = "empty, not a trajectory file" if not head else "not a trajectory file"
-    raise InputError(problem, MAKE_ONE, file=str(path))
+        problem = f"a run file where {named} belongs"
+        raise InputError(problem, FIRST[wanted], file=str(path))
+    problem = f"empty, not {named}" if not head else f"not {named}"
+    raise InputError(problem, MADE_BY[wanted], file=str(path))
 
 
 @contextmanager
-def _readable(path: str | os.PathLike[str], key: str, shown: str = "") -> Iterator[h5py.File]:
+def readable(path: str | os.PathLike[str], key: str, shown: str = "", again: str = AGAIN) -> Iterator[h5py.File]:
     """The open file; whatever HDF5 says of a damaged one becomes one clear line."""
     name = shown or str(path)
     try:
@@ -174,7 +184,7 @@ def _readable(path: str | os.PathLike[str], key: str, shown: str = "") -> Iterat
     except FileNotFoundError:
         raise InputError("no such file", "the name of an existing file", file=name) from None
     except (OSError, RuntimeError, KeyError, ValueError, TypeError, AttributeError) as error:
-        raise InputError(_fault(str(error)), AGAIN, key=key, file=name) from error
+        raise InputError(_fault(str(error)), again, key=key, file=name) from error
 
 
 def _fault(text: str) -> str:
@@ -192,20 +202,24 @@ def _read(path: str | os.PathLike[str], file: h5py.File, name: str) -> np.ndarra
         raise InputError(_fault(str(error)), AGAIN, key=f"/{name}", file=str(path)) from error
 
 
-def _checked_attrs(file: h5py.File, name: str) -> dict[str, Any]:
+def checked_attrs(
+    file: h5py.File, name: str, wanted: str = FORMAT, version: int = FORMAT_VERSION, again: str = AGAIN
+) -> dict[str, Any]:
+    """The root attributes of a complete file of a format, once they are as they were written."""
     attrs = {key: plain_value(value) for key, value in file.attrs.items()}
     made_by = attrs.get("format")
-    if made_by != FORMAT:
+    if made_by != wanted:
         is_ours = isinstance(made_by, str) and made_by.startswith("driftrose ")
-        problem = f"holds {made_by}, not trajectories" if is_ours else "an HDF5 file from elsewhere"
-        raise InputError(problem, MAKE_ONE, file=name)
+        content = wanted.removeprefix("driftrose ")
+        problem = f"holds {made_by}, not {content}" if is_ours else "an HDF5 file from elsewhere"
+        raise InputError(problem, MADE_BY[wanted], file=name)
     if attrs.get(DIGEST) != digest(attrs):
-        raise InputError("its attributes were changed after it was made", AGAIN, key=DIGEST, file=name)
-    if attrs["format_version"] > FORMAT_VERSION:
-        remedy = f"a newer driftrose; this one reads up to {FORMAT_VERSION}"
+        raise InputError("its attributes were changed after it was made", again, key=DIGEST, file=name)
+    if attrs["format_version"] > version:
+        remedy = f"a newer driftrose; this one reads up to {version}"
         raise InputError("unknown", remedy, key="format_version", value=attrs["format_version"], file=name)
     if not attrs["complete"]:
-        raise InputError("incomplete: its run was stopped", AGAIN, file=name)
+        raise InputError("incomplete: its run was stopped", again, file=name)
     return attrs
 
 

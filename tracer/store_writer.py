@@ -19,12 +19,11 @@ from typing import Any, Self
 import h5py
 import numpy as np
 
-from fields.errors import InputError
 from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
 from tracer.stopping import Stopped
 from tracer.store_attrs import provenance
-from tracer.store_identity import identity, refuse_other
+from tracer.store_identity import damaged, identity, refuse_other
 from tracer.store_layout import amend, groups_of, skeleton, stripe_rows
 from tracer.store_log import CLOSING_BYTES, Log, reserve, write_at
 from tracer.store_output import LOG, PART, check_output, check_replaced, locked, publish, room_for, sync_directory
@@ -227,13 +226,13 @@ class TrajectoryWriter:
         refuse_other(header["identity"], identity(self._scenario, self._program), str(self.part))
         self._needed = header["size"]
         if os.fstat(self._file).st_size < self._needed:
-            raise self._damaged()
+            raise damaged(str(self.part))
         try:
             if isinstance(log.records[-1], dict) and "close" in log.records[-1]:
                 self._close(log.records[-1])
             self._opened(header["attrs"])
         except (OSError, RuntimeError, KeyError, ValueError) as error:
-            raise self._damaged() from error
+            raise damaged(str(self.part)) from error
         stripes = self._begun_stripes()
         for record in log.records[1:]:
             if isinstance(record, list) and stripes.stands(*record):
@@ -244,9 +243,6 @@ class TrajectoryWriter:
         os.ftruncate(self._file, closing["size"])
         for offset, text in closing["close"]:
             write_at(self._file, [base64.b85decode(text)], offset)
-
-    def _damaged(self) -> InputError:
-        return InputError("damaged, cannot be resumed", "--overwrite to start again", file=str(self.part))
 
     def _opened(self, attrs: dict[str, Any]) -> None:
         with h5py.File(self.part, "r", locking=False) as file:

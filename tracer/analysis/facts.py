@@ -7,6 +7,7 @@ from datetime import UTC, datetime, timedelta
 
 import numpy as np
 
+from tracer.access_records import AccessResult
 from tracer.records import Result
 from tracer.store_attrs import DIGEST, digest
 
@@ -60,7 +61,7 @@ class Facts:
         return self.start + timedelta(hours=float(time_h))
 
 
-def facts(result: Result) -> Facts:
+def facts(result: Result | AccessResult) -> Facts:
     """Gather the facts of a run from the attributes of its result."""
     attrs = result.attrs
     start = datetime.fromisoformat(str(attrs["start"]))

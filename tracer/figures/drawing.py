@@ -16,21 +16,25 @@ import matplotlib
 from matplotlib.figure import Figure
 
 from fields.errors import InputError, nearest
+from tracer.access_records import AccessResult
 from tracer.analysis.facts import Facts, facts
+from tracer.figures.access_maps import draw_access_maps
+from tracer.figures.access_orbits import draw_access_orbits
 from tracer.figures.arrivals import draw_arrivals
 from tracer.figures.drivers import draw_drivers
 from tracer.figures.ends import draw_ends
 from tracer.figures.paths import draw_paths
 from tracer.figures.style import SETTINGS, settle
+from tracer.opening import open as open_result
 from tracer.records import CAUTION, Result
 from tracer.stopping import Stopped
-from tracer.store import open as open_result
 
 FORMATS = ("png", "svg", "pdf")
+Kinds = dict[str, Callable[[], list[Figure]]]
 
 
 def draw(
-    result: Result | str | Path,
+    result: Result | AccessResult | str | Path,
     directory: str | Path,
     format: str = "png",
     overwrite: bool = False,
@@ -42,8 +46,8 @@ def draw(
 
     Parameters
     ----------
-    result : Result, str or Path
-        Traced particles, or the file that holds them.
+    result : Result, AccessResult, str or Path
+        Traced particles or access, or the file that holds them.
     directory : str or Path
         Where the figures go; made when missing.
     format : {"png", "svg", "pdf"}
@@ -57,7 +61,7 @@ def draw(
     Returns
     -------
     list of Path
-        The files written: paths, drivers, arrivals, ends, as far as they fit.
+        The files written, as far as they fit: paths, drivers, arrivals, ends; of access, maps and orbits.
 
     Raises
     ------
@@ -68,10 +72,10 @@ def draw(
     """
     if format not in FORMATS:
         raise InputError("unknown format", nearest(format, FORMATS), key="format", value=format)
-    given = result if isinstance(result, Result) else open_result(result)
+    given = result if isinstance(result, (Result, AccessResult)) else open_result(result)
     run = facts(given)
     _check_place(run, arrival_r_re, arrival_mlt_h)
-    stem = _stem(run.title) if isinstance(result, Result) else Path(result).stem
+    stem = _stem(run.title) if isinstance(result, (Result, AccessResult)) else Path(result).stem
     targets = {
         Path(directory) / f"{stem}-{name}.{format}": (name, figure)
         for name, figure in fitting(given, arrival_r_re, arrival_mlt_h).items()
@@ -81,15 +85,10 @@ def draw(
 
 
 def fitting(
-    result: Result, r_re: float | None = None, sector_h: tuple[float, float] | None = None
+    result: Result | AccessResult, r_re: float | None = None, sector_h: tuple[float, float] | None = None
 ) -> dict[str, Figure]:
     """The figures that fit a result, by name, not yet in files; the place of arrivals as in `draw`."""
-    kinds: dict[str, Callable[[], list[Figure]]] = {
-        "paths": lambda: draw_paths(result),
-        "drivers": lambda: draw_drivers(result),
-        "arrivals": lambda: draw_arrivals(result, r_re, sector_h),
-        "ends": lambda: draw_ends(result),
-    }
+    kinds = _of_access(result) if isinstance(result, AccessResult) else _of_tracks(result, r_re, sector_h)
     found = {}
     with matplotlib.rc_context(SETTINGS), _any_script():
         for kind, make in kinds.items():
@@ -97,6 +96,19 @@ def fitting(
                 settle(figure)
                 found[kind if number == 1 else f"{kind}-{number}"] = figure
     return found
+
+
+def _of_access(result: AccessResult) -> Kinds:
+    return {"access": lambda: draw_access_maps(result), "orbits": lambda: draw_access_orbits(result)}
+
+
+def _of_tracks(result: Result, r_re: float | None, sector_h: tuple[float, float] | None) -> Kinds:
+    return {
+        "paths": lambda: draw_paths(result),
+        "drivers": lambda: draw_drivers(result),
+        "arrivals": lambda: draw_arrivals(result, r_re, sector_h),
+        "ends": lambda: draw_ends(result),
+    }
 
 
 @contextmanager
