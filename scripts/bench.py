@@ -1,136 +1,113 @@
 """Print how fast the drift kernel and the command are, on this machine.
 
-All contenders are tuned to the same error of the end point and take turns, so that a change of the machine's mood hits
-all alike. Medians over the rounds, and in brackets the smallest and the largest.
+All contenders are tuned to the same error of the end point and take turns with the kernel, so that a change of the
+machine's mood hits both. Medians over the rounds, and in brackets the smallest and the largest.
 """
 
 from __future__ import annotations
 
 import argparse
-import json
 import os
 import platform
-import shutil
-import subprocess
-import sys
-import tempfile
-import time
-from collections.abc import Callable
-from importlib.metadata import version
+from collections.abc import Callable, Iterator
+from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
+from typing import Any
 
-import numpy as np
-from bench_contenders import CONTENDERS
-from bench_problems import PITCHES, TARGET_RE, Contender, Problem, problem, tuned
+import bench_record
+from bench_access import access
+from bench_command import command
+from bench_contenders import ABSENT, CONTENDERS, OURS
+from bench_forecast import forecast
+from bench_problems import PITCHES, TARGET_RE, Problem, problem
+from bench_race import race
+from bench_scaling import processors, threads, tracks
 from bench_size import size
+from bench_start import start
+from bench_work import work
 
-from tracer.pipeline import processors
+import tracer
+from tracer.pipeline import processors as processors_here
 from tracer.store_attrs import processor
-from tracer.templates import new_runfile
 
 ROUNDS = 7
-COLD_KERNEL = (
-    "import sys, tracer; from tracer.integrate import compile_kernel; compile_kernel(tracer.load(sys.argv[1]))"
-)
+PACKAGES = ("numba", "llvmlite", "numpy", "scipy", "h5py", "heyoka", "numbalsoda")
+# each of both problems, and each of the command
+KERNEL: dict[str, Callable[[Problem, int], dict[str, Any]]] = {
+    "work": work, "tracks": tracks, "threads": threads, "processors": processors,
+}  # fmt: skip
+COMMAND: dict[str, Callable[[int], Any]] = {
+    "command": command, "start": start, "forecast": lambda _: forecast(), "access": access,
+}  # fmt: skip
+PARTS = ("opponents", *KERNEL, *COMMAND)
 
 
-def spread(values: list[float], digits: int = 3) -> str:
-    """Median, and smallest to largest."""
-    shown = [f"{value:,.{digits}f}" for value in (np.median(values), min(values), max(values))]
-    return f"{shown[0]}  ({shown[1]} to {shown[2]})"
-
-
-def seconds(work: Callable[[], object]) -> float:
-    began = time.perf_counter()
-    work()
-    return time.perf_counter() - began
-
-
-def machine() -> None:
-    names = ("numba", "llvmlite", "numpy", "scipy", "h5py")
+def machine() -> dict[str, Any]:
+    """Print where this runs."""
     system = f"{platform.system()} {platform.release()}"
-    print(f"{processor()['cpu']}, {processors()} processors, load {os.getloadavg()[0]:.1f}, {system}")
-    print(f"Python {platform.python_version()}, " + ", ".join(f"{name} {version(name)}" for name in names))
+    print(f"{processor()['cpu']}, {processors_here()} processors, load {os.getloadavg()[0]:.1f}, {system}")
+    versions = {"driftrose": tracer.__version__, "Python": platform.python_version()}
+    for name in PACKAGES:
+        try:
+            versions[name] = version(name)
+        except PackageNotFoundError:
+            continue
+    print(", ".join(f"{name} {number}" for name, number in versions.items()))
+    for package in ABSENT:
+        print(f"{package}: not installed, left out; pip install {package}")
+    return {"cpu": processor()["cpu"], "processors": processors_here(), "system": system, "versions": versions}
 
 
-# ------------------------------------------------------------------------------------------------------------- kernels
-
-
-def race(asked: Problem, contenders: list[Contender], rounds: int) -> None:
-    """Tune, warm up, then take turns."""
-    tolerance = {c.name: tuned(c, asked) for c in contenders}
-    print(f"\n{asked.name}: {TARGET_RE:g} R_E at 99 %, particles per second")
-    rates: dict[str, list[float]] = {c.name: [] for c in contenders}
-    ends: dict[str, np.ndarray] = {}
-    for _ in range(rounds):
-        for c in contenders:
-            state = asked.state[: c.count]
-            began = time.perf_counter()
-            ends[c.name] = c.run(asked, state, tolerance[c.name])
-            rates[c.name].append(len(state) / (time.perf_counter() - began))
-    base = np.median(rates[contenders[0].name])
-    for c in contenders:
-        share = np.median(rates[c.name]) / base
-        told = f"tolerance {tolerance[c.name]:.1e}{work(c, ends, rates)}"
-        print(f"  {c.name:28} {spread(rates[c.name], 0):34} x {share:.3g}   {told}")
-
-
-def work(contender: Contender, ends: dict[str, np.ndarray], rates: dict[str, list[float]]) -> str:
-    """Steps of a particle and time of a right-hand side, where they are counted."""
-    if not contender.stages:
-        return ""
-    steps = float(np.mean(ends[contender.name][:, 8] + ends[contender.name][:, 9]))
-    each_ns = 1e9 / (np.median(rates[contender.name]) * steps * contender.stages)
-    return f", {steps:.0f} steps, {each_ns:.2f} ns a right-hand side"
-
-
-# ------------------------------------------------------------------------------------------------------------- command
-
-
-def command(*arguments: str, folder: Path) -> float:
-    """Wall-clock time of one call."""
-    call = [sys.executable, "-m", "tracer", *arguments]
-    root = str(Path(__file__).parents[1])
-    env = {**os.environ, "PYTHONPATH": root}
-    return seconds(lambda: subprocess.run(call, cwd=folder, env=env, check=True, capture_output=True))
-
-
-def commands(rounds: int) -> None:
-    """The kernel compiled from nothing, the storm traced with a warm cache, and the time to the first help."""
-    with tempfile.TemporaryDirectory() as name:
-        folder = Path(name)
-        (run,) = (path for path in new_runfile(folder / "storm.toml") if path.suffix == ".toml")
-        cold = {**os.environ, "DRIFTROSE_CACHE_DIR": str(folder / "empty")}
-        call = [sys.executable, "-c", COLD_KERNEL, str(run)]
-        cold_s = seconds(lambda: subprocess.run(call, env=cold, check=True))
-        warm_s = seconds(lambda: subprocess.run(call, check=True))
-        print(f"\nkernel in a new process: {cold_s:.1f} s compiled, {warm_s:.2f} s from the cache, imports included")
-        shutil.rmtree(folder / "empty")
-        traced = [command("trace", "storm.toml", "--overwrite", "--quiet", folder=folder) for _ in range(rounds)]
-        megabytes = (folder / "storm.h5").stat().st_size / 1e6
-        print(f"driftrose trace storm.toml, 20,000 particles, {megabytes:.0f} MB: {spread(traced, 2)} s")
-        helped = [command("--help", folder=folder) for _ in range(rounds)]
-        print(f"driftrose --help: {spread(helped)} s")
+def measured(parts: list[str], targets: list[float], only: str, rounds: int) -> Iterator[dict[str, Any]]:
+    """All parts, one after another; what was found so far, after each."""
+    found: dict[str, Any] = {part: {} for part in parts}
+    others = [contender for contender in CONTENDERS[1:] if only in contender.name]
+    for pitch in PITCHES if {"opponents", *KERNEL} & set(parts) else ():
+        asked = problem(pitch, OURS.count)
+        if "opponents" in parts:
+            found["opponents"][pitch] = {}
+            for target in targets:
+                found["opponents"][pitch][f"{target:g} R_E"] = race(asked, target, OURS, others, rounds)
+                yield found
+        for part in KERNEL:
+            if part in parts:
+                found[part][pitch] = KERNEL[part](asked, rounds)
+                yield found
+    for part in COMMAND:
+        if part in parts:
+            said = COMMAND[part](rounds)
+            found[part] = "printed only" if said is None else said
+            yield found
 
 
 def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--rounds", type=int, default=ROUNDS, help=f"how often each is timed [default: {ROUNDS}]")
-    parser.add_argument("--only", metavar="TEXT", default="", help="contenders whose name holds TEXT")
-    parser.add_argument("--no-commands", action="store_true", help="leave out the command line")
+    parser.add_argument(
+        "--parts", nargs="+", choices=PARTS, metavar="PART", default=list(PARTS),
+        help=f"of {', '.join(PARTS)} [default: all]",
+    )  # fmt: skip
+    parser.add_argument("--only", metavar="TEXT", default="", help="opponents whose name holds TEXT")
+    parser.add_argument(
+        "--target", type=float, nargs="+", metavar="R_E", default=[TARGET_RE],
+        help="errors of the end point, 99 %% to be below, that the opponents are tuned to [default: 1e-5]",
+    )  # fmt: skip
     parser.add_argument("--size", action="store_true", help="instead: writing, and the memory of large runs")
+    parser.add_argument("--record", type=Path, metavar="FILE", help="write what was found, as JSON")
+    parser.add_argument("--changed", metavar="TEXT", default="", help="what was changed in the opponents, and why")
     given = parser.parse_args()
-    machine()
+    lines = bench_record.changes(given.record, given.changed) if given.record else []
+    here = machine()
     if given.size:
         size()
         return
-    chosen = [c for c in CONTENDERS if given.only in c.name]
-    if not chosen:
-        parser.error(f"no contender of that name; there are {json.dumps([c.name for c in CONTENDERS])}")
-    for pitch in PITCHES:
-        race(problem(pitch, max(c.count for c in chosen)), chosen, given.rounds)
-    if not given.no_commands:
-        commands(given.rounds)
+    asked = {"rounds": given.rounds, "only": given.only}
+    found: dict[str, Any] = {}
+    for found in measured(given.parts, given.target, given.only, given.rounds):
+        if given.record:  # after every part: a long run may be stopped
+            bench_record.write(given.record, lines, {"complete": False, "machine": here, **asked, **found})
+    if given.record:
+        bench_record.write(given.record, lines, {"complete": True, "machine": here, **asked, **found})
 
 
 if __name__ == "__main__":

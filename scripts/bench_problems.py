@@ -18,6 +18,7 @@ from tracer.scenario import Scenario
 TARGET_RE = 1e-5  # error of the end point that 99 % of the particles are to stay below
 TRUTH = 1e-13  # local tolerance of the reference
 SAMPLE = 2048  # particles by which a tolerance is judged
+COARSEST = 8.0  # minus the binary logarithm of a tolerance that nobody can do with
 
 PITCHES: dict[str, Any] = {
     "equatorial": 90.0,
@@ -60,8 +61,9 @@ class Problem:
 
     Attributes
     ----------
-    state : ndarray, shape (n, 7)
-        r, phi, release, mu, k, 1/q, 2/(m c^2), shuffled: any first part is a fair sample.
+    state : ndarray, shape (n, 7 or more)
+        r, phi, release, mu, k, 1/q, 2/(m c^2) first, as `tracer.integrate.prepare` makes it; shuffled: any first
+        part is a fair sample.
     truth : ndarray, shape (SAMPLE, 10)
         End states of the first particles, as `tracer.integrate.advance` gives them, at a far finer tolerance.
     """
@@ -87,7 +89,8 @@ def problem(pitch: str, count: int) -> Problem:
 
 
 Run = Callable[[Problem, np.ndarray, float], np.ndarray]
-"""(problem, state, tolerance) -> end states, shape (n, 10); columns 1 (r), 5 (cause) and 6 (turns) are judged."""
+"""(problem, state, tolerance) -> end states, shape (n, 10); columns 1 (r), 5 (cause) and 6 (turns) are judged; 8 and 9
+are accepted and rejected steps, or NaN."""
 
 
 @dataclass(frozen=True)
@@ -100,23 +103,51 @@ class Contender:
     run : callable
         See `Run`. Its tolerance is its own affair: it is tuned to the wanted error.
     count : int
-        How many particles it is given in a round: as many as it takes about a second for.
+        How many particles it is given in a round: as many as it takes about half a second for.
     stages : int
-        Right-hand sides of one step; 0 when its end states do not count steps.
+        Right-hand sides of one step; 0 when its end states do not count them.
+    finest : float
+        The smallest tolerance that it bears.
     """
 
     name: str
     run: Run
     count: int
     stages: int = 0
+    finest: float = 2.0**-48
 
 
-def tuned(contender: Contender, asked: Problem) -> float:
-    """The largest tolerance on a grid of factors of two with which the contender meets `TARGET_RE`."""
+class OutOfReach(RuntimeError):  # noqa: N818 - an answer like any other
+    """No tolerance is fine enough."""
+
+
+def tuned(contender: Contender, asked: Problem, target: float | None = None) -> float:
+    """The largest tolerance with which the contender meets the target (`TARGET_RE`), to a factor of 2^(1/4).
+
+    Found by halving, first among powers of two, then between the last that failed and the first that did not, as if a
+    finer one never did worse.
+
+    Raises
+    ------
+    OutOfReach
+    """
+    wanted = TARGET_RE if target is None else target
     state = asked.state[: min(SAMPLE, contender.count)]
-    exponents = range(10, 44)
-    for exponent in exponents:
-        tolerance = 2.0**-exponent
-        if asked.error(contender.run(asked, state, tolerance)) <= TARGET_RE:
-            return tolerance
-    raise RuntimeError(f"{contender.name} does not reach {TARGET_RE:g} R_E")
+
+    def meets(exponent: float) -> bool:
+        return asked.error(contender.run(asked, state, 2.0**-exponent)) <= wanted
+
+    finest = float(round(-np.log2(contender.finest)))
+    fails, passes = COARSEST, 2.0 * COARSEST  # coarse ones cost little, fine ones much
+    while not meets(passes):
+        if passes == finest:
+            raise OutOfReach(f"{contender.name} does not reach {wanted:g} R_E")
+        fails, passes = passes, min(2.0 * passes, finest)
+    for grain in (1.0, 0.25):
+        while passes - fails > grain:
+            middle = fails + grain * round(0.5 * (passes - fails) / grain)
+            if meets(middle):
+                passes = middle
+            else:
+                fails = middle
+    return float(2.0**-passes)
