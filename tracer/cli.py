@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import json
 import math
 import signal
@@ -17,6 +18,7 @@ from tracer import __version__
 from tracer.stopping import Stopped
 
 DONE, INTERNAL, BAD_INPUT, STOPPED = 0, 1, 2, 3
+COLLECT_AFTER = 50_000  # new objects: imports make many and no garbage, and looking for it takes 5 % of the start
 
 
 @click.group(context_settings={"help_option_names": ["-h", "--help"]})
@@ -58,8 +60,9 @@ def check(run: str, as_json: bool) -> None:
     from tracer.preview import check as preview
     from tracer.runfile import load
     from tracer.tables import preview_text
+    from tracer.terminal import watcher
 
-    found = preview(load(run))
+    found = preview(load(run), watcher=watcher(quiet=False))
     click.echo(_json(found) if as_json else preview_text(found))
 
 
@@ -116,6 +119,41 @@ def trace(
 
 
 @command.command()
+@click.argument("run", type=click.Path())
+@click.option("-o", "--output", type=click.Path(), help="Access file to write.  [default: RUN's stem.access.h5, here]")
+@click.option("--overwrite", is_flag=True, help="Replace existing files, once the new ones are whole.")
+@click.option("--resume", is_flag=True, help="Go on with a run that was interrupted, to the same bits.")
+@click.option("--threads", type=click.IntRange(1, 1024), help="Threads to use.  [default: all]")
+@click.option("--quiet", is_flag=True, help="No progress, no closing table.")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON object in place of the table.")
+def access(
+    run: str, output: str | None, overwrite: bool, resume: bool, threads: int | None, quiet: bool, as_json: bool
+) -> None:
+    """Find out what can reach the places and orbits of RUN, when, and from where."""
+    from tracer.access_csv import written
+    from tracer.access_run import access as access_run
+    from tracer.access_tables import closing, closing_text
+    from tracer.runfile import load
+    from tracer.terminal import watcher
+
+    out = output or f"{Path(run).stem}.access.h5"
+    scenario = load(run)
+    warnings = (*scenario.field.warnings(), *scenario.origin.remarks)
+    found = access_run(
+        scenario, out, overwrite=overwrite, resume=resume, threads=threads, watcher=watcher(quiet, warnings)
+    )
+    tables = written(found, out)
+    if as_json:
+        click.echo(_json({"file": out, "tables": tables, "disk_bytes": Path(out).stat().st_size, **closing(found)}))
+    elif not found.work:
+        click.echo(f"{out}: complete already, nothing to resume")
+    elif not quiet:
+        click.echo(closing_text(found))
+        for name in (out, *tables):
+            click.echo(f"wrote {name}")
+
+
+@command.command()
 @click.argument("file", type=click.Path())
 @click.option("-o", "--output", type=click.Path(), required=True, help="Trajectory file to write.")
 @click.option("--level", type=click.IntRange(1, 9), default=4, show_default=True, help="1: fastest; 9: smallest.")
@@ -165,6 +203,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     """Run the command and return its exit status: 0 done, 1 internal failure, 2 bad input, 3 stopped early."""
     previous = _stop_on_terminate()
     stdout = sys.stdout
+    thresholds = gc.get_threshold()
+    gc.set_threshold(COLLECT_AFTER, *thresholds[1:])
     try:
         command.main(args=None if arguments is None else list(arguments), prog_name=PREFIX, standalone_mode=False)
         return DONE
@@ -190,6 +230,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         _explain(error)
         return INTERNAL
     finally:
+        gc.set_threshold(*thresholds)
         if previous is not None:
             signal.signal(signal.SIGTERM, previous)
 

@@ -5,9 +5,10 @@ from __future__ import annotations
 import os
 import threading
 import time
-from collections.abc import Generator, Iterable, Iterator, Sequence
+from collections.abc import Callable, Generator, Iterable, Iterator, Sequence
 from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
 from contextlib import closing
+from typing import TypeVar
 
 import numpy as np
 
@@ -17,7 +18,7 @@ from tracer.accuracy import audit, run_pilot
 from tracer.collect import Collector
 from tracer.crew import Crew, hired
 from tracer.integrate import Interrupted, compile_kernel, run_chunk
-from tracer.kernels.build import Kernel, program_of
+from tracer.kernels.build import Kernel, kernel_for, program_of
 from tracer.progress import Silent, Watcher
 from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
@@ -25,6 +26,7 @@ from tracer.stopping import Stopped, WorkersLost
 
 CHUNK = 4096  # particles
 Span = tuple[int, int]
+Done = TypeVar("Done")
 Sink = store.TrajectoryWriter | Collector
 
 
@@ -69,12 +71,15 @@ def trace(
     Raises
     ------
     InputError
-        When `out` cannot be written or exists; with `resume`, when there is nothing to resume, or when the input, the
-        versions or the processor are not those of the interrupted run; when a cluster cannot be reached, or has workers
-        of other versions or processors.
+        When the run has no population; when `out` cannot be written or exists; with `resume`, when there is nothing to
+        resume, or when the input, the versions or the processor are not those of the interrupted run; when a cluster
+        cannot be reached, or has workers of other versions or processors.
     Stopped
         On Ctrl-C, a full disk, or when the cluster is lost. What was finished is kept beside `out`, for `resume`.
     """
+    if not scenario.populations:
+        remedy = "at least one [[population]]"
+        raise InputError("nothing to trace", remedy, key="population", file=scenario.origin.file)
     if resume:
         if out is None:
             raise InputError("nothing to resume in memory", "the name of the file", key="out")
@@ -88,7 +93,7 @@ def trace(
     try:
         try:
             with sink:
-                watch.compiling()
+                watch.compiling(kernel_for(scenario.field, scenario.equatorial).fresh)
                 with crew as helpers:
                     return _traced(scenario, sink, helpers, threads or processors(), watch, began)
         finally:
@@ -121,6 +126,7 @@ def _traced(scenario: Scenario, sink: Sink, crew: Crew | None, threads: int, wat
             for name in ("accepted", "rejected"):
                 work[name] += chunk.work[name]
     traced_s = time.perf_counter() - moving
+    watch.auditing()
     errors = audit(scenario, kernel, tolerance)
     measured = {
         "end_error_50_re": errors.median,
@@ -143,24 +149,32 @@ def processors() -> int:
 def chunks(
     scenario: Scenario, kernel: Kernel, spans: Iterable[Span], tolerance: float, threads: int, watch: Watcher
 ) -> Generator[Chunk]:
-    """The chunks of all spans in order of completion; never more in memory than there are threads and one.
+    """The chunks of all spans in order of completion; see `threaded`."""
 
-    Whatever ends it early, closing included, the threads have ended by then too.
+    def one(first: int, stop: int, stopped: Callable[[], bool]) -> Chunk:
+        return run_chunk(scenario, kernel, first, stop, tolerance, watch.advanced, stopped)
+
+    return threaded(one, spans, threads)
+
+
+def threaded(
+    work: Callable[[int, int, Callable[[], bool]], Done], spans: Iterable[Span], threads: int
+) -> Generator[Done]:
+    """What `work` makes of all spans, in order of completion; never more in memory than there are threads and one.
+
+    Whatever ends it early, closing included, the threads have ended by then too: the third argument of `work` tells
+    when to stop.
     """
     halt = threading.Event()
-
-    def one(first: int, stop: int) -> Chunk:
-        return run_chunk(scenario, kernel, first, stop, tolerance, watch.advanced, halt.is_set)
-
     with ThreadPoolExecutor(threads) as pool:
-        running: set[Future[Chunk]] = set()
+        running: set[Future[Done]] = set()
         try:
             for first, stop in spans:
-                running.add(pool.submit(one, first, stop))
+                running.add(pool.submit(work, first, stop, halt.is_set))
                 if len(running) > threads:
-                    yield from _finished(running)
+                    yield from _completed(running)
             while running:
-                yield from _finished(running)
+                yield from _completed(running)
         finally:
             halt.set()  # those still at work, if any, stop at their next batch; leaving the pool waits for them
 
@@ -179,7 +193,7 @@ def chunk_size(count: int, threads: int) -> int:
     return int(np.clip(share, 1, CHUNK))
 
 
-def _finished(running: set[Future[Chunk]]) -> Iterator[Chunk]:
+def _completed(running: set[Future[Done]]) -> Iterator[Done]:
     done, _ = wait(running, return_when=FIRST_COMPLETED)
     running -= done
     for future in done:
@@ -189,4 +203,5 @@ def _finished(running: set[Future[Chunk]]) -> Iterator[Chunk]:
 def _sink(scenario: Scenario, out: str | os.PathLike[str] | None, overwrite: bool, resume: bool) -> Sink:
     if out is None:
         return Collector(scenario)
-    return store.TrajectoryWriter(out, scenario, overwrite=overwrite, resume=resume, program=program_of(scenario.field))
+    program = program_of(scenario.field, scenario.equatorial)
+    return store.TrajectoryWriter(out, scenario, overwrite=overwrite, resume=resume, program=program)

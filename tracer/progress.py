@@ -8,8 +8,8 @@ from typing import Protocol
 class Watcher(Protocol):
     """What a run reports, in this order; `advanced` comes from many threads."""
 
-    def compiling(self) -> None:
-        """The kernel is being compiled or loaded."""
+    def compiling(self, anew: bool) -> None:
+        """The kernel is being compiled; or, when not `anew`, loaded from the disk."""
 
     def piloting(self) -> None:
         """The pilot sample is being traced."""
@@ -20,14 +20,17 @@ class Watcher(Protocol):
     def advanced(self, count: int) -> None:
         """`count` more particles are done."""
 
+    def auditing(self) -> None:
+        """All particles are done; a sample is traced again to measure the error."""
+
     def done(self) -> None:
-        """The run is over."""
+        """The run is over, whatever ended it."""
 
 
 class Silent:
     """Says nothing."""
 
-    def compiling(self) -> None:
+    def compiling(self, anew: bool) -> None:
         """See Watcher."""
 
     def piloting(self) -> None:
@@ -37,6 +40,9 @@ class Silent:
         """See Watcher."""
 
     def advanced(self, count: int) -> None:
+        """See Watcher."""
+
+    def auditing(self) -> None:
         """See Watcher."""
 
     def done(self) -> None:

@@ -25,7 +25,7 @@ from tracer.store_attrs import processor, versions
 
 KEPT = 16  # runs that a worker holds: a client that died did not dismiss its own
 FIELDS, TRACER = (Path(package.__file__ or "").parent for package in (fields, tracer))
-DECIDING = ("adiabatic.py", "integrate.py", "population.py", "scenario.py", "status.py")
+DECIDING = ("adiabatic.py", "integrate.py", "population.py", "scenario.py", "spacing.py", "status.py")
 
 
 class NotHeld(LookupError):  # noqa: N818 - nothing went wrong: the worker has been started anew
@@ -66,7 +66,7 @@ def identity(scenario: Scenario) -> dict[str, str]:
     """All on which the bits of a result depend, apart from the scenario."""
     name, features = target()
     compiled = {"kernel_cpu": name, "kernel_cpu_features": " ".join(sorted(features.split(",")))}
-    sources = {"sources_sha256": sources_digest(function_files(scenario.field))[:16]}
+    sources = {"sources_sha256": sources_digest(function_files(scenario.field, scenario.equatorial))[:16]}
     return {**versions(), "cpu_features": processor()["cpu_features"], **compiled, **sources}
 
 

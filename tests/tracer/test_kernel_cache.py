@@ -127,6 +127,28 @@ def test_a_second_process_compiles_no_kernel_of_a_run() -> None:
         assert (misses, hits) == (0, 1) or (name == "storm, backward" and misses == 0), name
 
 
+FRESH_RUN = """
+build.SOURCE = Path({source!r})
+kernel = build.kernel_for(fields.compose(fields.Dipole(b0_nT=30000.0), [fields.Corotation()]))
+called = {called!r} and kernel.module.advance(2.0, kernel.constants)
+print(json.dumps([kernel.fresh, called]))
+"""
+
+
+def test_what_has_yet_to_be_compiled_is_known_before(tiny: Path, cache: Path) -> None:
+    def run(called: str = "") -> Any:
+        return answer(started(FRESH_RUN, cache, source=str(tiny), called=called))
+
+    assert run() == [True, ""]  # the sources stand there now, as when a process is killed while it compiles
+    assert run("yes") == [True, VALUE]
+    assert run() == [False, ""]
+    (data,) = cache.rglob("*.nbc")  # numba writes its index first
+    data.unlink()
+    assert list(cache.rglob("*.nbi"))
+    assert run("yes") == [True, VALUE]
+    assert run("yes") == [False, VALUE]
+
+
 def test_processes_that_start_at_once_agree(tiny: Path, cache: Path) -> None:
     running = [started(TINY_RUN, cache, source=str(tiny)) for _ in range(3)]
     found = [answer(process) for process in running]

@@ -78,6 +78,7 @@ def test_a_step_is_packed_and_calls_nothing(kernel: Kernel, body: str) -> None:
 
 def test_a_call_would_be_found(kernel: Kernel) -> None:
     """The same look at a loop that does call a library, so that the check can fail."""
+
     def looped_over(values: Any) -> None:
         for i in range(values.size):
             values[i] = values[i] ** 1.7

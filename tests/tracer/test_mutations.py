@@ -24,7 +24,8 @@ from tracer.cli import main
 from tracer.scenario import Scenario
 
 SHIPPED = Path(tracer.__file__).parent / "scenarios"
-TEXTS = [path.read_text("utf-8") for path in sorted(SHIPPED.glob("*.toml"))]
+ACCESS = Path(__file__).parents[1] / "data" / "access" / "run.toml"
+TEXTS = [path.read_text("utf-8") for path in (*sorted(SHIPPED.glob("*.toml")), ACCESS)]
 NUMBERS = st.one_of(
     st.integers(-(2**70), 2**70),
     st.floats(),
@@ -33,7 +34,7 @@ NUMBERS = st.one_of(
 MOMENTS = st.datetimes(timezones=st.sampled_from([None, UTC, timezone(timedelta(hours=5))]))
 WORDS = st.one_of(
     st.text(max_size=8),
-    st.sampled_from(["series:kp", "series:", "grid", "sobol", "log", "area", "isotropic", "stop", "dipole", "e-", "."]),
+    st.sampled_from(["series:kp", "series:", "orbit.csv", "grid", "sobol", "log", "area", "isotropic", "e-", "."]),
 )
 SCALARS = st.one_of(NUMBERS, WORDS, st.booleans(), MOMENTS, st.dates(), st.times())
 VALUES = st.recursive(
@@ -49,11 +50,11 @@ RANGES = st.fixed_dictionaries(
 @pytest.fixture(scope="module")
 def folder(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Path]:
     path = tmp_path_factory.mktemp("mutations")
-    for history in SHIPPED.glob("*.csv"):
-        shutil.copy(history, path)
+    for table in (*SHIPPED.glob("*.csv"), *ACCESS.parent.glob("*.csv")):
+        shutil.copy(table, path)
     with pytest.MonkeyPatch.context() as patch:
         # a harmless mutation may ask for a billion particles; what `check` computes from a file read is not at stake
-        patch.setattr(preview, "check", lambda scenario: {"title": scenario.title})
+        patch.setattr(preview, "check", lambda scenario, watcher: {"title": scenario.title})
         patch.setattr(tables_module, "preview_text", lambda found: found["title"])
         yield path
 

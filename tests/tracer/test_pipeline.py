@@ -171,7 +171,7 @@ class Listener(Silent):
     def __init__(self) -> None:
         self.heard: list[Any] = []
 
-    def compiling(self) -> None:
+    def compiling(self, anew: bool) -> None:
         self.heard.append("compiling")
 
     def piloting(self) -> None:

@@ -1,9 +1,13 @@
-"""What `check` foretells, against what the run then takes."""
+"""What `check` foretells, against what the run takes. How true its times are, scripts/bench_forecast.py says."""
 
 from __future__ import annotations
 
 import json
+import os
+import subprocess
+import sys
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -13,6 +17,7 @@ from storm_runs import steady, storm, storm_field
 import tracer
 from tracer import preview
 from tracer.scenario import Output
+from tracer.templates import new_runfile
 
 RUN = storm(
     population(count=600),
@@ -32,6 +37,39 @@ def test_foretold_disk_and_work_are_those_of_the_run(tmp_path: Path) -> None:
     assert work["right_hand_sides"] == pytest.approx(12.0 * work["steps_per_particle"] * RUN.count)
     assert work["local_tolerance_re"] == result.attrs["local_tolerance_re"]
     assert work["seconds"] > 0.0
+
+
+SIZES = ((500, 1.0, 0.0), (150_000, 0.5, 0.0), (8192, 1.0, 0.06))  # particles, hours, minutes between saved times
+
+
+def told(*arguments: str, folder: Path) -> Any:
+    """What the command, in a process of its own, says of itself."""
+    command = [sys.executable, "-m", "tracer", *arguments, "--json"]
+    env = {**os.environ, "PYTHONPATH": str(Path(tracer.__file__).parents[1])}
+    done = subprocess.run(command, cwd=folder, env=env, capture_output=True, text=True, check=True)
+    return json.loads(done.stdout)
+
+
+def test_memory_and_disk_of_three_sizes_are_foretold(tmp_path: Path) -> None:
+    path = tmp_path / "storm.toml"
+    new_runfile(path)
+    text = path.read_text("utf-8").replace('tracks = "double"', 'tracks = "single"')
+    told("check", "storm.toml", folder=tmp_path)  # compiles, if nobody has
+    memory, disk = [], []
+    for count, hours, every_min in SIZES:
+        for key, value in (("count", count), ("hours", hours), ("every_min", every_min)):
+            line = next(line for line in text.splitlines() if line.startswith(f"{key} = "))
+            text = text.replace(line, f"{key} = {value}")
+        path.write_text(text, "utf-8")
+        foretold = told("check", "storm.toml", folder=tmp_path)
+        taken = told("trace", "storm.toml", "--overwrite", folder=tmp_path)
+        assert taken["disk_bytes"] == (tmp_path / "storm.h5").stat().st_size
+        memory.append((foretold["memory_bytes"], taken["memory_bytes"]))
+        disk.append((foretold["disk_bytes"], taken["disk_bytes"]))
+    assert memory[2][1] > 1.5 * memory[0][1]  # so that no single number would do for all
+    assert disk[2][1] > 3.0 * disk[1][1] > 9.0 * disk[0][1]
+    np.testing.assert_allclose(*np.transpose(memory), rtol=0.25)
+    np.testing.assert_allclose(*np.transpose(disk), rtol=0.01)
 
 
 def test_what_is_computed() -> None:
@@ -71,7 +109,7 @@ def test_warnings_and_validity_are_told() -> None:
 
 
 def test_memory_grows_with_the_tracks_and_the_threads(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(preview, "_work", lambda scenario, threads: {})  # what takes time, and is not looked at here
+    monkeypatch.setattr(preview, "_work", lambda *_: {})  # what takes time, and is not looked at here
 
     def memory(every_min: float, threads: int) -> int:
         run = storm(population(count=10**6), output=Output(every_min=every_min))
