@@ -46,6 +46,10 @@ TABLE = {
     "first order in J2": Tolerance(3e-3, "secular rates of second order are J2 times those of first, here times a few"),
     "interpolating polynomial": Tolerance(1e-12, "the same polynomial by another algorithm, seven nodes or less"),
     "two runs of a path": Tolerance(1e-5, "each is asked to end within 1e-6 R_E; entries are divided by the drift"),
+    "boundary curve re": Tolerance(1e-8, "absolute, R_E: what is asked outside 0.01 R_E of a saddle"),
+    "entry by integration h": Tolerance(
+        1e-6, "absolute: 1e-11 R_E a step, magnified where paths part and where they enter along the boundary"
+    ),
     "closed form": Tolerance(1e-9, "root finding on closed-form potentials"),
 }
 

@@ -27,6 +27,9 @@ _HOMES = {
     "hamiltonian_keV": "tracer.adiabatic",
     "bounce_T": "tracer.adiabatic",
     "bounce_Y": "tracer.adiabatic",
+    "boundaries": "tracer.steady",
+    "classify": "tracer.steady",
+    "regions": "tracer.steady",
     "check": "tracer.preview",
     "draw": "tracer.figures",
 }

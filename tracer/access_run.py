@@ -18,8 +18,9 @@ from tracer.access_records import AccessResult
 from tracer.analysis.access import gathered, reduce
 from tracer.integrate import Interrupted
 from tracer.kernels.build import kernel_for, program_of
+from tracer.machine import processors
 from tracer.origins import Origins, audit, compile_kernel, origins, pilot
-from tracer.pipeline import pieces, processors, threaded
+from tracer.pipeline import pieces, threaded
 from tracer.progress import Silent, Watcher
 from tracer.scenario import Scenario
 from tracer.stopping import Stopped

@@ -19,6 +19,7 @@ from tracer.collect import Collector
 from tracer.crew import Crew, hired
 from tracer.integrate import Interrupted, compile_kernel, run_chunk
 from tracer.kernels.build import Kernel, kernel_for, program_of
+from tracer.machine import processors
 from tracer.progress import Silent, Watcher
 from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
@@ -139,11 +140,6 @@ def _traced(scenario: Scenario, sink: Sink, crew: Crew | None, threads: int, wat
     rate = work["particles"] / traced_s
     result.work.update(work, traced_s=traced_s, wall_s=time.perf_counter() - began, particles_per_s=rate)
     return result
-
-
-def processors() -> int:
-    """Processors that this process may use."""
-    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
 
 
 def chunks(

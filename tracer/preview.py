@@ -16,9 +16,10 @@ from tracer.accuracy import COARSE, PILOT_SEED, run_pilot, sample, states_of
 from tracer.adiabatic import periods
 from tracer.integrate import Tick, advance, compile_kernel
 from tracer.kernels.build import Kernel, kernel_for
+from tracer.machine import processors
 from tracer.memory import resident_bytes
 from tracer.pace import measured
-from tracer.pipeline import chunk_size, processors
+from tracer.pipeline import chunk_size
 from tracer.population import initial_state_at
 from tracer.progress import Silent, Watcher
 from tracer.scenario import Population, Scenario, Species

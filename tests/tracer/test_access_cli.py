@@ -202,8 +202,15 @@ def test_a_file_in_place_of_the_run(run: Run) -> None:
     assert run("access", "storm.toml", "--quiet").status == 0
     done = run("access", "storm.access.h5")
     assert (done.status, done.out, done.err.count("\n")) == (2, "", 1)
-    done = run("draw", "storm.access.h5")
+    done = run("trace", "storm.access.h5")
     assert (done.status, done.out, done.err.count("\n")) == (2, "", 1)
+
+
+def test_figures_of_a_file(run: Run) -> None:
+    assert run("access", "storm.toml", "--quiet").status == 0
+    done = run("draw", "storm.access.h5")
+    assert (done.status, done.err) == (0, "")
+    assert all(Path(line.removeprefix("wrote ")).stat().st_size > 10_000 for line in done.out.splitlines())
 
 
 def test_the_shipped_scenario(run: Run) -> None:

@@ -1,0 +1,10 @@
+"""What this machine offers."""
+
+from __future__ import annotations
+
+import os
+
+
+def processors() -> int:
+    """Processors that this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
