@@ -20,9 +20,10 @@ from tracer.integrate import Interrupted
 from tracer.kernels.build import kernel_for, program_of
 from tracer.machine import processors
 from tracer.origins import Origins, audit, compile_kernel, origins, pilot
-from tracer.pipeline import pieces, threaded
+from tracer.pipeline import threaded
 from tracer.progress import Silent, Watcher
 from tracer.scenario import Scenario
+from tracer.spans import pieces
 from tracer.stopping import Stopped
 from tracer.store_identity import identity
 from tracer.store_origins import ROW_BYTES, ROWS, OriginsFile, OriginsKept, all_told
@@ -127,10 +128,7 @@ def _traced(
     attrs = {
         **store_access.described(targets),
         **sink.begun,
-        "end_error_50_re": errors.median,
-        "end_error_99_re": errors.most,
-        "end_error_100_re": errors.worst,
-        "end_error_sample": errors.count,
+        **errors.attrs(),
     }
     return attrs, {**work, "traced_s": traced_s, "targets_per_s": work["traced"] / traced_s}
 

@@ -34,6 +34,15 @@ class Errors:
     worst: float
     count: int
 
+    def attrs(self) -> dict[str, float | int]:
+        """As the attributes of a file."""
+        return {
+            "end_error_50_re": self.median,
+            "end_error_99_re": self.most,
+            "end_error_100_re": self.worst,
+            "end_error_sample": self.count,
+        }
+
 
 @dataclass(frozen=True)
 class Pilot:

@@ -25,6 +25,7 @@ from tracer.integrate import Interrupted
 from tracer.progress import Watcher
 from tracer.records import Chunk
 from tracer.scenario import Scenario
+from tracer.spans import Span
 from tracer.stopping import WorkersLost
 from tracer.worker import NotHeld, differences, dismiss, enlist, identity, packed, work
 
@@ -39,8 +40,6 @@ FETCH_S = 2.0, 120.0  # for one result to arrive: at first, and at most
 SURVEY_S = 2.0  # between two looks at who has come and gone
 TICK_S = 0.5
 PARTING_S = 1.0
-
-Span = tuple[int, int]
 
 
 @dataclass(frozen=True)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import os
 import threading
 import time
-from collections.abc import Callable, Generator, Iterable, Iterator, Sequence
+from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, ThreadPoolExecutor, wait
 from contextlib import closing
 from typing import TypeVar
@@ -23,10 +23,10 @@ from tracer.machine import processors
 from tracer.progress import Silent, Watcher
 from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
+from tracer.spans import Span, pieces
 from tracer.stopping import Stopped, WorkersLost
 
 CHUNK = 4096  # particles
-Span = tuple[int, int]
 Done = TypeVar("Done")
 Sink = store.TrajectoryWriter | Collector
 
@@ -129,13 +129,7 @@ def _traced(scenario: Scenario, sink: Sink, crew: Crew | None, threads: int, wat
     traced_s = time.perf_counter() - moving
     watch.auditing()
     errors = audit(scenario, kernel, tolerance)
-    measured = {
-        "end_error_50_re": errors.median,
-        "end_error_99_re": errors.most,
-        "end_error_100_re": errors.worst,
-        "end_error_sample": errors.count,
-    }
-    sink.finish(measured)
+    sink.finish(errors.attrs())
     result = sink.result()
     rate = work["particles"] / traced_s
     result.work.update(work, traced_s=traced_s, wall_s=time.perf_counter() - began, particles_per_s=rate)
@@ -173,13 +167,6 @@ def threaded(
                 yield from _completed(running)
         finally:
             halt.set()  # those still at work, if any, stop at their next batch; leaving the pool waits for them
-
-
-def pieces(spans: Sequence[Span], size: int) -> Iterator[Span]:
-    """The same particles in spans of at most `size`, cut at its multiples."""
-    for begin, end in spans:
-        for cut in range(begin // size * size, end, size):
-            yield max(cut, begin), min(cut + size, end)
 
 
 def chunk_size(count: int, threads: int) -> int:

@@ -29,6 +29,7 @@ from tracer.kernels.build import cache_root
 from tracer.progress import Watcher
 from tracer.records import Chunk
 from tracer.scenario import Scenario
+from tracer.spans import Span
 from tracer.stopping import WorkersLost
 from tracer.worker import enlist, packed, ready, work
 
@@ -36,8 +37,6 @@ COMMAND = (sys.executable, "-P", "-c", "from tracer.processes import serve; serv
 DEATHS = 3  # workers that may die with the same chunk in hand
 PATIENCE = 1.0  # seconds a worker has to end when asked
 KEY = "run"
-
-Span = tuple[int, int]
 
 
 @dataclass(eq=False)

@@ -19,6 +19,7 @@ import numpy as np
 
 from tracer.access_records import TARGET
 from tracer.origins import Origins
+from tracer.spans import Span, joined
 from tracer.stopping import Stopped
 from tracer.store_identity import damaged, refuse_other
 from tracer.store_log import Log, reserve, write_at
@@ -31,7 +32,6 @@ DTYPES = {column.name: np.dtype(column.dtype) for column in TARGET}
 ROW_BYTES = sum(dtype.itemsize for dtype in DTYPES.values())
 DIGEST_LETTERS = 32
 
-Span = tuple[int, int]
 Columns = dict[str, np.ndarray]
 
 
@@ -153,12 +153,7 @@ class OriginsFile:
 
     def missing(self) -> list[Span]:
         """The targets that are not known yet, as spans, rising."""
-        spans: list[Span] = []
-        for chunk in range(self._chunks):
-            if chunk not in self._done:
-                first, stop = self._span(chunk)
-                spans[-1:] = [(spans[-1][0], stop)] if spans and spans[-1][1] == first else [*spans[-1:], (first, stop)]
-        return spans
+        return joined(self._span(chunk) for chunk in range(self._chunks) if chunk not in self._done)
 
     def stopped(self) -> str:
         """What to say of a run that was stopped."""

@@ -21,6 +21,7 @@ import numpy as np
 
 from tracer.records import Chunk, Result
 from tracer.scenario import Scenario
+from tracer.spans import Span, joined
 from tracer.stopping import Stopped
 from tracer.store_attrs import provenance
 from tracer.store_identity import damaged, identity, refuse_other
@@ -33,7 +34,6 @@ from tracer.store_reader import open as read
 from tracer.store_seal import seal
 
 LOG_FORMAT = "driftrose log 1"
-Span = tuple[int, int]
 
 
 class TrajectoryWriter:
@@ -160,12 +160,7 @@ class TrajectoryWriter:
     def missing(self) -> list[Span]:
         """The particles that are not in the file yet, as spans, rising."""
         stripes = self._begun_stripes()
-        spans: list[Span] = []
-        for stripe in stripes.holding(0, stripes.count):
-            if stripe not in self._done:
-                first, stop = stripes.span(stripe)
-                spans[-1:] = [(spans[-1][0], stop)] if spans and spans[-1][1] == first else [*spans[-1:], (first, stop)]
-        return spans
+        return joined(stripes.span(s) for s in stripes.holding(0, stripes.count) if s not in self._done)
 
     def write(self, chunk: Chunk) -> None:
         """Put the columns of some consecutive particles at their place; chunks may come in any order and length."""

@@ -15,7 +15,7 @@ from contextlib import suppress
 from fields.errors import PREFIX
 from tracer.progress import Silent, Watcher
 
-COMPILING = "compiling the kernel for this combination of fields; takes some 20 s, once on this machine"
+COMPILING = "compiling the kernel for this combination of fields; takes half a minute, once on this machine"
 INTERVAL_S = 60.0
 
 

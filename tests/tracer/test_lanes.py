@@ -34,12 +34,19 @@ BACKWARD = replace(
 TOLERANCE = 1e-10
 
 
-def one_by_one(run: Scenario, kernel: Kernel, state: np.ndarray, end: np.ndarray, track: np.ndarray) -> None:
+def one_by_one(
+    run: Scenario,
+    kernel: Kernel,
+    state: np.ndarray,
+    end: np.ndarray,
+    track: np.ndarray,
+    times: np.ndarray,
+) -> None:
     """The same by the loop over single particles, which searches every step for boundaries."""
     loop: Any = storm_runs.part(kernel, "scalar").advance_one_by_one
     domain, cone = run.domain, CONE_MODES[run.loss_cone]
     rules = (run.direction, domain.outer_re, domain.inner_re, domain.foot_re, cone, TOLERANCE)
-    loop(state, kernel.constants, kernel.edges, kernel.segments, rules, run.save_times_h, end, track)
+    loop(state, kernel.constants, kernel.edges, kernel.segments, rules, times, end, track)
 
 
 @pytest.mark.parametrize("run", [RUN, BACKWARD, replace(RUN, loss_cone="stop")], ids=["flag", "backward", "stop"])
@@ -47,7 +54,7 @@ def test_lanes_agree_with_the_plain_loop(run: Scenario) -> None:
     kernel, state = compile_kernel(run), prepare(run, 0, run.count).state
     end, track = advance(run, kernel, state, TOLERANCE, run.save_times_h)
     plain_end, plain_track = np.full_like(end, np.nan), np.full_like(track, np.nan)
-    one_by_one(run, kernel, state, plain_end, plain_track)
+    one_by_one(run, kernel, state, plain_end, plain_track, run.save_times_h)
     assert np.array_equal(end[:, 5], plain_end[:, 5])
     assert {Cause.DRIFTING, Cause.OUTER, Cause.INNER} <= set(end[:, 5])
     # the same arithmetic, rounded in another order
@@ -107,3 +114,25 @@ def test_a_fast_one_beside_slow_ones() -> None:
     assert end[0, 8] > 5 * np.max(end[1:, 8])
     rest, _ = advance(run, kernel, state[1:], 1e-9, np.empty(0))
     assert rest.tobytes() == end[1:].tobytes()
+
+
+@pytest.mark.parametrize("depth", [1e-1, 1e-3, 1e-5])
+def test_a_graze_is_met_as_by_the_plain_loop(depth: float) -> None:
+    """An outer boundary just below the farthest point of a path: the particle turns as it crosses."""
+    kernel, state = compile_kernel(RUN), prepare(RUN, 0, RUN.count).state
+    _, track = advance(RUN, kernel, state, TOLERANCE, RUN.save_times_h)
+    grazed = 0
+    for row, r in zip(state, track[:, 0]):
+        inside = np.flatnonzero(np.isfinite(r))
+        if not inside.size or (top := int(np.nanargmax(r))) in (inside[0], inside[-1]):
+            continue
+        run = replace(RUN, domain=replace(RUN.domain, outer_re=float(r[top]) - depth))
+        if row[0] >= run.domain.outer_re:
+            continue
+        end, _ = advance(run, kernel, row[None], TOLERANCE, np.empty(0))
+        plain = np.full_like(end, np.nan)
+        one_by_one(run, kernel, row[None], plain, np.empty((1, 4, 0)), np.empty(0))
+        assert end[0, 5] == plain[0, 5] == Cause.OUTER
+        assert end[0, 0] == pytest.approx(plain[0, 0], abs=1e-8)
+        grazed += 1
+    assert grazed > 10

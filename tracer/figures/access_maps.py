@@ -53,7 +53,7 @@ def _figure(result: AccessResult, species: int, pitch: int) -> Figure:
 
 def _panel(run: Facts, result: AccessResult, time: int, energy: int) -> str:
     kinetic = result.energy_keV[energy]
-    words = "cold (0 keV)" if kinetic == 0.0 else f"{kinetic:g} keV"
+    words = "cold (0 keV)" if kinetic == 0.0 else f"{kinetic:.3g} keV"
     return f"{words}, {run.utc(result.time_h[time]):%d %b %H:%M} UTC"
 
 

@@ -14,6 +14,7 @@ from tracer.figures.clock import time_ticks
 from tracer.figures.style import FAINT, INK, frame, key, page, plain_log_axis
 
 MOST_PITCHES = 4
+LEAST_SPAN_RE = 1.0
 
 
 def draw_access_orbits(result: AccessResult) -> list[Figure]:
@@ -59,7 +60,10 @@ def _distance(axes: Axes, orbit: OrbitAccess) -> None:
     """Where the spacecraft's field line crosses the equator: distance, and local time as hours of the clock."""
     finite = np.isfinite(orbit.r_re)
     axes.plot(orbit.time_h[finite], orbit.r_re[finite], color=INK, linewidth=1.2)
-    axes.set_ylabel("equatorial\ndistance (R_E)")
+    low, high = axes.get_ylim()
+    spare = max(0.5 * (LEAST_SPAN_RE - (high - low)), 0.0)  # a circle is to look like one
+    axes.set_ylim(low - spare, high + spare)
+    axes.set_ylabel("r at the\nequator (R_E)")
     axes.grid(True)
     hours = axes.twinx()
     breaks = np.abs(np.diff(orbit.mlt_h, prepend=orbit.mlt_h[:1])) > 12.0

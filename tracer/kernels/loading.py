@@ -37,8 +37,10 @@ def look_on_disk_first(function: Any) -> None:
     """
     from numba.core.runtime.nrt import rtsys
 
-    cache = function._cache
-    load = cache.load_overload
+    cache = getattr(function, "_cache", None)
+    load = getattr(cache, "load_overload", None)
+    if cache is None or load is None:  # another numba, with other names inside: it takes its own time
+        return
 
     def load_overload(signature: Any, context: Any) -> Any:
         def first_only() -> None:

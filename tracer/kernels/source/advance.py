@@ -32,12 +32,13 @@ from .stages import (
 DRIFTING, FAILED = int(Cause.DRIFTING), int(Cause.FAILED)
 CONE_OFF, CONE_STOP = 0, 2
 EVER = 1e300  # a time that no run reaches
-SIDE_BY_SIDE = 4  # registers of lanes that the processor works on at once: fewer leave it waiting
+SIDE_BY_SIDE = 4  # registers of lanes that the processor works on at once; short bodies need no more than one or two
 # columns of `end`
 TIME, END_R, END_MLT, END_ENERGY, END_PITCH, CAUSE, TURNED, CONE_TIME, GOOD_STEPS, BAD_STEPS = range(10)
 # rows of the bookkeeping `S`: particle, driver segment, first and next saved time, cause, limit aimed at, shots so far
 OWNER, SEGMENT, BEGUN, FOLLOWING, FATE, AIM, SHOTS = range(7)
 MOST_SHOTS = 6
+ASTRAY = 1e-5  # R_E, or a part of the foot field: no touch is as far from its limit
 
 
 @compiled
@@ -151,20 +152,22 @@ def land(W: Any, S: Any, lane: Any, C: Any, rules: Any, end: Any) -> None:
     """The step ended next to the limit it was aimed at: end there, or aim once more.
 
     A last shift of less than 1e-6 of the step is taken to first order. At a touch the rate vanishes, and the place
-    found on the interpolant stands.
+    found on the interpolant stands. What is still away from the limit then has failed: it is not put there.
     """
     stand_apart()
     _, outer, inner, foot_re, cone, _ = rules
     which, step = S[AIM, lane], W[STEP + lane]
     t, r, phi = W[TN + lane], W[RN + lane], W[PN + lane]
     p, D = particle(W, lane), drivers(W, D0 + lane, LANES)
-    shift, by_r, by_phi = shift_to(which, t, r, phi, step, outer, inner, foot_re, p, C, D)
+    shift, by_r, by_phi, away = shift_to(which, t, r, phi, step, outer, inner, foot_re, p, C, D)
     S[SHOTS, lane] += 1
     if 1e-6 * abs(step) <= abs(shift) < 0.5 * abs(step) and S[SHOTS, lane] < MOST_SHOTS:
         retake(W, lane, step + shift)
         return
     if abs(shift) < 1e-6 * abs(step):
         t, r, phi = t + shift, r + by_r * shift, phi + by_phi * shift
+    if not (abs(shift) < 1e-6 * abs(step) or away < ASTRAY):
+        which = FAILED
     if which == CONE:
         end[S[OWNER, lane], CONE_TIME] = t
         W[WATCH + lane] = 0.0

@@ -124,13 +124,14 @@ def first_crossing(which: Any, F: Any, outer: Any, inner: Any, foot_re: Any, p: 
 def shift_to(
     which: Any, t: Any, r: Any, phi: Any, h: Any, outer: Any, inner: Any, foot_re: Any, p: Any, C: Any, D: Any
 ) -> Any:  # fmt: skip
-    """Newton's step in time from the end of a step of length `h` to the limit, and the slopes there."""
+    """Newton's step in time from the end of a step of length `h` to the limit, the slopes there, and how far off the
+    end is."""
     stand_apart()
     by_r, by_phi = slope_at(t, r, phi, p, C, D)
     small = 1e-5 * h
     g = excess(which, r, phi, outer, inner, foot_re, p, C)
     rate = (excess(which, r + by_r * small, phi + by_phi * small, outer, inner, foot_re, p, C) - g) / small
-    return -g / rate, by_r, by_phi
+    return -g / rate, by_r, by_phi, abs(g)
 
 
 @compiled
